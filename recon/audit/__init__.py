@@ -1,0 +1,1 @@
+"""Canonical bytes, chain and proofs: decides everything, touches nothing."""

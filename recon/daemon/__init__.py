@@ -1,0 +1,1 @@
+"""The scheduled service: ticks, claims, publishes."""

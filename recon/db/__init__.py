@@ -1,0 +1,1 @@
+"""The book: all its SQL, on SQLite and PostgreSQL."""

@@ -1,0 +1,1 @@
+"""Site files and balance files: what people declare, and every fault in it."""

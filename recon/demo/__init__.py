@@ -1,0 +1,1 @@
+"""The invented site, as plant sources with a known truth."""

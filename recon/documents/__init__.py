@@ -1,0 +1,1 @@
+"""Workbooks, CSV, JSON and text: files in, files out."""

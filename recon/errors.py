@@ -1,0 +1,121 @@
+"""Every exception this project raises on purpose, and the exit status it ends a command with.
+
+A broken balance, a suspect meter or a missing assay is a *finding* (``recon.findings``), not an
+exception. An exception means that the work asked for cannot be done: a wrong file, data that
+contradict a declared equality, a broken record, or an edit that came too late.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+DONE = 0
+PERSON_NEEDED = 1
+BAD_INPUT = 2
+CANNOT_SOLVE = 3
+EVIDENCE_BROKEN = 4
+
+
+class ReconError(Exception):
+    """Root of all errors raised on purpose; ``status`` is the exit status of a command."""
+
+    status = BAD_INPUT
+
+
+class ConfigError(ReconError):
+    """A site file, balance file or setting is wrong."""
+
+
+class DataError(ReconError):
+    """Data from the plant or from a sheet cannot be used as they are."""
+
+
+class SolveError(ReconError):
+    """No acceptable answer exists for the problem as stated."""
+
+    status = CANNOT_SOLVE
+
+
+class AuditError(ReconError):
+    """The stored record is not what it was."""
+
+    status = EVIDENCE_BROKEN
+
+
+class ConflictError(ReconError):
+    """Somebody else changed or holds what this step needs; nothing was written."""
+
+
+class FaultyFileError(ConfigError):
+    """A declared file has faults; all of them are listed at once.
+
+    Parameters
+    ----------
+    path : str
+        The file as the user named it.
+    faults : sequence of str
+        One sentence a fault: place, expected, found, what to do.
+    """
+
+    def __init__(self, path: str, faults: Sequence[str]) -> None:
+        self.path = path
+        self.faults = tuple(faults)
+        count = len(self.faults)
+        head = f"{path}: {count} fault{'s' if count != 1 else ''}, nothing was computed."
+        super().__init__("\n".join([head, *(f"  - {fault}" for fault in self.faults)]))
+
+
+class UnreadableFileError(ConfigError):
+    """A file is missing, is not readable, or is not in the format its name says."""
+
+    def __init__(self, path: str, reason: str) -> None:
+        self.path = path
+        self.reason = reason
+        super().__init__(f"{path}: {reason}")
+
+
+class UnknownUnitError(ConfigError):
+    """A unit is not in the closed table of ``recon.units``."""
+
+    def __init__(self, unit: str, known: Sequence[str]) -> None:
+        self.unit = unit
+        super().__init__(f'unknown unit "{unit}". Known units: {", ".join(known)}.')
+
+
+class WrongUnitKindError(ConfigError):
+    """Two units of different kinds were to be converted into one another."""
+
+    def __init__(self, unit: str, found: str, expected: str) -> None:
+        super().__init__(f'unit "{unit}" is a {found}; a {expected} is expected here.')
+
+
+class ContradictionError(SolveError):
+    """Balances, relations and held figures cannot all be met.
+
+    Parameters
+    ----------
+    rows : sequence of str
+        Readable names of the equalities that stay open, worst first, with the gap.
+    """
+
+    def __init__(self, rows: Sequence[str]) -> None:
+        self.rows = tuple(rows)
+        super().__init__(
+            "Balances, relations, bounds and held figures cannot be met together. Open: "
+            + "; ".join(self.rows)
+            + ". Release a held figure or correct a relation."
+        )
+
+
+class NotAcceptedError(SolveError):
+    """Every engine's answer failed our own checks.
+
+    Parameters
+    ----------
+    reasons : sequence of str
+        One sentence an engine: which check failed, by how much, and where.
+    """
+
+    def __init__(self, reasons: Sequence[str]) -> None:
+        self.reasons = tuple(reasons)
+        super().__init__("No answer passed the acceptance checks. " + " ".join(self.reasons))

@@ -1,0 +1,1 @@
+"""The site as drawn and the balances that follow."""

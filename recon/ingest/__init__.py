@@ -1,0 +1,1 @@
+"""Raw rows become measurements, each with its uncertainty and shared error sources."""

@@ -1,0 +1,88 @@
+"""What ingest hands on: measurements with their evidence, day by day, and what it found."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import date
+from typing import Literal
+
+from recon.declare.site import Use
+from recon.findings import Finding
+from recon.reconcile.problem import Measurement, Problem
+
+
+@dataclass(frozen=True, kw_only=True)
+class Measured:
+    """
+    One measurement with where it comes from.
+
+    Attributes
+    ----------
+    measurement : Measurement
+        Its ``period`` is the day's place in the month, 1-based; a stock's boundary is in its
+        parts.
+    tag : str
+        Instrument.
+    day : date
+        Plant day; for a stock, the day it closes, or the first day with ``boundary = "opening"``.
+    stream, node, quantity, basis
+        What it is of.
+    use : str
+        ``compare`` measurements are not in the problem.
+    estimated : bool
+        Stands in for a value not yet known, by a declared rule.
+    stage : str
+        Stage of the value that counts; "" where there is one only.
+    raw : float or None
+        Before the conversion chain [raw_unit]: wet tonnes, pulp volume, ...; and ``moisture``
+        [1] where the chain had one.
+    coverage : float
+        Covered share of running time [-]; 1 for documents.
+    evidence : tuple of str
+        Natural keys of records, or chunk digests of readings.
+    rolled_hours : float
+        For a survey: how far it was rolled to the cut [h], signed.
+    """
+
+    measurement: Measurement
+    tag: str
+    day: date
+    quantity: str
+    basis: Literal["amount", "fraction"]
+    use: Use
+    stream: str | None = None
+    node: str | None = None
+    boundary: Literal["", "opening", "closing"] = ""
+    estimated: bool = False
+    stage: str = ""
+    raw: float | None = None
+    raw_unit: str = ""
+    moisture: float | None = None
+    coverage: float = 1.0
+    evidence: tuple[str, ...] = ()
+    rolled_hours: float = 0.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class IngestedMonth:
+    """
+    A month to date, ready to be reconciled.
+
+    Attributes
+    ----------
+    days : tuple of date
+        Period p of the problem is ``days[p - 1]``.
+    problem : Problem
+        Holds the ``fit`` and ``held`` measurements.
+    measured : tuple of Measured
+        Every measurement, those compared only included.
+    findings : tuple of Finding
+    not_running : tuple of (date, str)
+        Streams that stood all day: amounts zero, assays set aside with a finding.
+    """
+
+    days: tuple[date, ...]
+    problem: Problem
+    measured: tuple[Measured, ...]
+    findings: tuple[Finding, ...]
+    not_running: tuple[tuple[date, str], ...] = ()

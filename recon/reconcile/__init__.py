@@ -1,0 +1,1 @@
+"""State the least squares problem, and read its answer."""

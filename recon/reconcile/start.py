@@ -1,0 +1,209 @@
+"""Where the search begins: values and sizes from the data alone.
+
+Ratios make the problem non-convex. The start solves a convex relative of it, in which an assay's
+misfit is ``(A - value * M) / (u * M_ref)`` with a reference mass that is refreshed a few times.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+from scipy import sparse
+
+from recon.flowsheet.balances import Amount, Stock
+from recon.flowsheet.network import MASS
+from recon.reconcile.linearise import Local, Point, local
+from recon.reconcile.state import Common, Share, carries_mass
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    from numpy.typing import NDArray
+
+    from recon.reconcile.solver import Step
+    from recon.reconcile.state import Readings, State
+
+    Vector = NDArray[np.float64]
+
+PULL = 1e-3
+"""Weight of the pull towards the first guess in the convex start, per typical size."""
+SMALLEST = 1e-3
+"""Smallest size of an unknown, as a share of the typical size of its quantity."""
+PASSES = 4
+
+
+def first_guess(state: State) -> tuple[Vector, Vector]:
+    """
+    Guess every unknown and its size from readings of it, else from its quantity's median.
+
+    Returns
+    -------
+    x, size : ndarray
+        Shape (n,) [t or -]; sizes are positive.
+    """
+    x = np.full(len(state.columns), np.nan)
+    fractions: dict[int, list[float]] = {}
+    amounts: dict[int, list[float]] = {}
+    for readings in (state.fit, state.held):
+        _collect(readings, amounts, fractions)
+    for column, values in amounts.items():
+        x[column] = float(np.mean(values))
+    typical = _typical_sizes(state, x, fractions)
+    sizes = np.array([_typical_of(c, typical) for c in state.columns])
+    mass_first = sorted(
+        range(len(x)), key=lambda i: getattr(state.columns[i], "quantity", MASS) != MASS
+    )
+    for i in mass_first:
+        if np.isnan(x[i]):
+            x[i] = _fill(state, i, x, fractions, sizes[i])
+    _fill_compositions(state, x)
+    size = np.maximum(np.abs(x), SMALLEST * sizes)
+    return x, size
+
+
+def _collect(
+    readings: Readings, amounts: dict[int, list[float]], fractions: dict[int, list[float]]
+) -> None:
+    """Sort the readings of one single unknown by its column."""
+    for i, measurement in enumerate(readings.measurements):
+        if len(measurement.parts) != 1 or len(measurement.parts[0].of) != 1:
+            continue
+        k = readings.gather[[i], :].indices[0]
+        row = readings.of[[k], :]
+        if not len(row.indices):
+            continue
+        into = fractions if readings.ratio[k] else amounts
+        into.setdefault(int(row.indices[0]), []).append(measurement.value / float(row.data[0]))
+
+
+def _typical_sizes(
+    state: State, x: Vector, fractions: dict[int, list[float]]
+) -> dict[tuple[type, str], float]:
+    """Median size of each quantity among streams and among stocks, from whatever is read."""
+    quantities = state.problem.flowsheets[0].quantities
+    kinds = (Amount, Stock)
+    found: dict[tuple[type, str], list[float]] = {(k, q): [] for k in kinds for q in quantities}
+    grades: dict[str, list[float]] = {q: [] for q in quantities}
+    for i, column in enumerate(state.columns):
+        if isinstance(column, Amount | Stock):
+            if not np.isnan(x[i]) and x[i] != 0:
+                found[type(column), column.quantity].append(abs(x[i]))
+            grades[column.quantity] += [abs(v) for v in fractions.get(i, []) if v]
+    everything = [v for values in found.values() for v in values]
+    overall = float(np.median(everything)) if everything else 1.0
+    result: dict[tuple[type, str], float] = {}
+    for kind in kinds:
+        masses = found.get((kind, MASS)) or found.get((Amount, MASS)) or []
+        mass = float(np.median(masses)) if masses else overall
+        for quantity in quantities:
+            own = found[kind, quantity]
+            if quantity == MASS or MASS not in quantities:
+                result[kind, quantity] = float(np.median(own)) if own else mass
+            elif grades[quantity]:
+                result[kind, quantity] = mass * float(np.median(grades[quantity]))
+            else:
+                result[kind, quantity] = float(np.median(own)) if own else 0.1 * mass
+    return result
+
+
+def _typical_of(column: object, typical: dict[tuple[type, str], float]) -> float:
+    if isinstance(column, Share):
+        return 1.0
+    if isinstance(column, Common):
+        return typical[Amount, column.quantity]
+    assert isinstance(column, Amount | Stock)
+    return typical[type(column), column.quantity]
+
+
+def _fill(state: State, i: int, x: Vector, fractions: dict[int, list[float]], size: float) -> float:
+    column = state.columns[i]
+    if isinstance(column, Share | Common):
+        return size
+    if carries_mass(state, column):
+        mass = float(x[state.index[column._replace(quantity=MASS)]])
+        if i in fractions:
+            return mass * float(np.mean(fractions[i]))
+        return min(size, 0.5 * mass)
+    return size
+
+
+def _fill_compositions(state: State, x: Vector) -> None:
+    """Shares in proportion to what leaves, common vectors as its sum."""
+    if not len(state.alike):
+        return
+    amount, share, common = state.alike.T
+    x[np.unique(common)] = 0.0
+    np.add.at(x, common, np.abs(x[amount]))
+    whole = np.zeros_like(x)
+    np.add.at(whole, share, np.abs(x[amount]))
+    for node in {(c.period, c.node) for c in state.columns if isinstance(c, Share)}:
+        members = [
+            i
+            for i, c in enumerate(state.columns)
+            if isinstance(c, Share) and (c.period, c.node) == node
+        ]
+        total = whole[members].sum()
+        x[members] = whole[members] / total if total > 0 else 1 / len(members)
+
+
+def convex_start(state: State, solve: Callable[[Local], Step]) -> tuple[Point, Vector]:
+    """
+    Solve the convex relative of the problem.
+
+    Parameters
+    ----------
+    state : State
+    solve : callable
+        Solves one local problem; it may raise what an engine raises.
+
+    Returns
+    -------
+    point : Point
+        Meets balances and bounds.
+    size : ndarray
+        Typical size of each unknown at it, shape (n,), all positive.
+    """
+    x, size = first_guess(state)
+    reference = np.abs(state.fit.denominators(x))
+    beta = np.zeros(state.draws)
+    floor = SMALLEST * size
+    for _ in range(PASSES if state.fit.ratio.any() or len(state.alike) else 1):
+        around = _convex_local(state, Point(x=x, beta=beta), size, reference)
+        move = solve(around).move
+        x = x + size * move[: len(x)]
+        beta = beta + move[len(x) :]
+        below = state.fit.denominators(x)
+        reference = np.maximum(np.abs(below), SMALLEST * reference)
+    return Point(x=x, beta=beta), np.maximum(np.abs(x), floor)
+
+
+def _convex_local(state: State, point: Point, size: Vector, reference: Vector) -> Local:
+    fit, x, beta = state.fit, point.x, point.beta
+    n, g = len(x), state.draws
+    exact = local(state, point, size)
+    shares = np.maximum(np.asarray(fit.gather.sum(axis=1)).ravel(), 1e-12)
+    target = np.where(fit.ratio, (fit.gather.T @ (fit.value / shares)), 0.0)
+    of = sparse.diags_array(1 / reference) @ (fit.of - sparse.diags_array(target) @ fit.over)
+    slope = sparse.csr_array(fit.gather @ of)
+    is_ratio = np.asarray((fit.gather @ fit.ratio.astype(np.float64)) > 0)
+    aim = np.where(is_ratio, 0.0, fit.value)
+    drift = sparse.diags_array(fit.value) @ fit.relative + fit.absolute
+    weight = sparse.diags_array(1 / fit.u)
+    pull = sparse.hstack([PULL * sparse.eye_array(n), sparse.csr_array((n, g))])
+    prior = sparse.hstack([sparse.csr_array((g, n)), sparse.eye_array(g)])
+    rows = sparse.hstack([weight @ slope @ sparse.diags_array(size), weight @ drift])
+    return Local(
+        data=sparse.csr_array(sparse.vstack([rows, pull, prior])),
+        misfit=np.concatenate([(aim - slope @ x - drift @ beta) / fit.u, np.zeros(n), -beta]),
+        equal=exact.equal,
+        gap=exact.gap,
+        bound=exact.bound,
+        room=exact.room,
+        equal_names=exact.equal_names,
+        bound_names=exact.bound_names,
+        scale=exact.scale,
+        held_rows=exact.held_rows,
+        held_pull=exact.held_pull,
+        standing=exact.standing,
+    )

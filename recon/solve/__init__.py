@@ -1,0 +1,1 @@
+"""Numbers out of a problem: one engine, one file."""

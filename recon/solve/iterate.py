@@ -1,0 +1,116 @@
+"""From a start to the optimum: local problems one after the other, each step checked."""
+
+from __future__ import annotations
+
+import time
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from recon.errors import NotAcceptedError
+from recon.reconcile.linearise import Point, local
+from recon.reconcile.solver import Solution
+from recon.reconcile.start import convex_start
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    from numpy.typing import NDArray
+
+    from recon.reconcile.linearise import Local
+    from recon.reconcile.solver import Step
+    from recon.reconcile.state import State
+
+    Vector = NDArray[np.float64]
+
+MOST_PASSES = 80
+STILL = 1e-10
+"""The search ends when no reading's fitted value moves by more than this many of its u."""
+KEEP = 0.05
+"""One step may take a denominator down to this share of itself, so no ratio is lost at once."""
+
+
+def iterate(state: State, solve: Callable[[Local], Step], *, engine: str) -> Solution:
+    """
+    Solve a problem by Gauss-Newton steps with a line search.
+
+    Parameters
+    ----------
+    state : State
+    solve : callable
+        Solves one local problem.
+    engine : str
+        Name recorded with the answer.
+
+    Raises
+    ------
+    NotAcceptedError
+        The search did not come to rest, or no step lowers the misfit.
+    ContradictionError
+        Passed on from ``solve``.
+    """
+    began = time.perf_counter()
+    point, size = convex_start(state, solve)
+    for passes in range(1, MOST_PASSES + 1):
+        around = local(state, point, size)
+        step = solve(around)
+        if _at_rest(around, step):
+            return Solution(
+                point=point,
+                local=around,
+                equal_force=step.equal_force,
+                bound_force=step.bound_force,
+                objective=float(around.misfit @ around.misfit),
+                engine=engine,
+                iterations=passes,
+                seconds=time.perf_counter() - began,
+            )
+        point = _advance(state, point, size, around, step, engine)
+    raise NotAcceptedError([f"{engine} did not come to rest in {MOST_PASSES} passes."])
+
+
+def _at_rest(around: Local, step: Step) -> bool:
+    moved = float(np.max(np.abs(around.data @ step.move), initial=0.0))
+    open_rows = float(np.max(np.abs(around.gap), initial=0.0))
+    scale = 1.0 + float(np.max(np.abs(around.misfit), initial=0.0))
+    return moved <= STILL * scale and open_rows <= STILL
+
+
+def _advance(
+    state: State, point: Point, size: Vector, around: Local, step: Step, engine: str
+) -> Point:
+    """Take the largest of the halved steps that lowers misfit and open equalities together."""
+    n = len(point.x)
+    move_x = size * step.move[:n]
+    price = 1.0 + 2.0 * float(np.max(np.abs(step.equal_force), initial=0.0))
+    before = _merit(around, price)
+    promised = _promised(around, step, price)
+    length = _longest(state, point.x, move_x)
+    for _ in range(40):
+        trial = Point(x=point.x + length * move_x, beta=point.beta + length * step.move[n:])
+        after = _merit(local(state, trial, size), price)
+        if after <= before - 1e-4 * length * promised + 1e-13 * abs(before):
+            return trial
+        length *= 0.5
+    raise NotAcceptedError([f"{engine} found no step that lowers the misfit."])
+
+
+def _merit(around: Local, price: float) -> float:
+    return 0.5 * float(around.misfit @ around.misfit) + price * float(np.sum(np.abs(around.gap)))
+
+
+def _promised(around: Local, step: Step, price: float) -> float:
+    """How far the linearised problem expects a whole step to lower the merit."""
+    left = around.misfit - around.data @ step.move
+    gain = 0.5 * float(around.misfit @ around.misfit - left @ left)
+    return max(gain + price * float(np.sum(np.abs(around.gap))), 0.0)
+
+
+def _longest(state: State, x: Vector, move: Vector) -> float:
+    """The largest step, at most 1, that keeps every running denominator positive."""
+    now = state.fit.over @ x
+    change = state.fit.over @ move
+    falling = state.fit.ratio & (now > 0) & (change < -(1 - KEEP) * now)
+    if not falling.any():
+        return 1.0
+    return float(np.min((1 - KEEP) * now[falling] / -change[falling]))

@@ -1,0 +1,1 @@
+"""What chance does not explain."""

@@ -1,0 +1,1 @@
+"""Metal accounting tables: leaves, totals, unaccounted metal."""

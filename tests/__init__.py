@@ -1,0 +1,1 @@
+"""The project's tests; `python -m tests.check` is the one command."""
