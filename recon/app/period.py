@@ -9,70 +9,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 from datetime import date, datetime
 
-from recon.declare.site import Site
 from recon.findings import Finding
+from recon.ingest.given import Decision, OpeningStock, SiteVersion
 from recon.ingest.rows import Record, TagDay
 from recon.tabulate.cells import Cell
-
-
-@dataclass(frozen=True, kw_only=True)
-class SiteVersion:
-    """A site version in force with the digest of its text."""
-
-    digest: str
-    site: Site
-
-
-@dataclass(frozen=True, kw_only=True)
-class Decision:
-    """
-    A person's approved decision that changes what is computed.
-
-    Attributes
-    ----------
-    decision : str
-        Its digest.
-    kind : str
-        ``set aside``, ``corrected reading`` (factor or value), ``override``, ``held``.
-    tag : str
-    first, last : date
-        Plant days it covers.
-    value : float or None
-        Factor of a corrected reading, or the overriding value in the instrument's unit.
-    reason, by : str
-    """
-
-    decision: str
-    kind: str
-    tag: str
-    first: date
-    last: date
-    value: float | None
-    reason: str
-    by: str
-
-
-@dataclass(frozen=True, kw_only=True)
-class OpeningStock:
-    """A stock as signed (or in draft) at last month's close [t], with its booked lines."""
-
-    node: str
-    quantity: str
-    value: float | None
-    u: float | None
-    basis: str
-    booked: float = 0.0
-
-
-@dataclass(frozen=True, kw_only=True)
-class YearLeaf:
-    """A signed month's leaf that the year to date adds: table row and column [t]."""
-
-    month: str
-    table: str
-    row: str
-    column: str
-    value: float
+from recon.tabulate.leaves import YearLeaf
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -208,3 +149,17 @@ class PeriodResult:
     leaves: tuple[YearLeaf, ...]
     summary: tuple[tuple[str, str], ...]
     method: tuple[tuple[str, str], ...]
+
+
+__all__ = [
+    "Decision",
+    "EstimateRow",
+    "FigureRow",
+    "MeasurementRow",
+    "OffsetRow",
+    "OpeningStock",
+    "PeriodInputs",
+    "PeriodResult",
+    "SiteVersion",
+    "YearLeaf",
+]

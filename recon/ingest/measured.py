@@ -12,6 +12,28 @@ from recon.reconcile.problem import Measurement, Problem
 
 
 @dataclass(frozen=True, kw_only=True)
+class Correction:
+    """
+    What one approved decision did to one measurement, in the measurement's canonical unit.
+
+    Attributes
+    ----------
+    decision, kind, reason, by : str
+        As decided; ``kind`` is ``set aside``, ``corrected reading``, ``override`` or ``held``.
+    before, after : float or None
+        Value before and after this decision; ``after`` is None where it was set aside, ``before``
+        where there was no reading.
+    """
+
+    decision: str
+    kind: str
+    before: float | None
+    after: float | None
+    reason: str = ""
+    by: str = ""
+
+
+@dataclass(frozen=True, kw_only=True)
 class Measured:
     """
     One measurement with where it comes from.
@@ -41,7 +63,13 @@ class Measured:
     evidence : tuple of str
         Natural keys of records, or chunk digests of readings.
     rolled_hours : float
-        For a survey: how far it was rolled to the cut [h], signed.
+        For a survey: how far it was rolled to the cut [h], signed. Beyond the place's roll limit
+        the stock counts as *by difference* in what is signed.
+    corrections : tuple of Correction
+        Approved decisions that touched it, in the order applied; ``measurement.value`` is what
+        the last one left, or what was read where all it did was to set it aside.
+    set_aside : bool
+        By decision: kept here for the bridge, not in the problem and not in what is signed.
     """
 
     measurement: Measurement
@@ -61,6 +89,8 @@ class Measured:
     coverage: float = 1.0
     evidence: tuple[str, ...] = ()
     rolled_hours: float = 0.0
+    corrections: tuple[Correction, ...] = ()
+    set_aside: bool = False
 
 
 @dataclass(frozen=True, kw_only=True)
