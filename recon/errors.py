@@ -46,6 +46,17 @@ class ConflictError(ReconError):
     """Somebody else changed or holds what this step needs; nothing was written."""
 
 
+class LostClaimError(ConflictError):
+    """A claim is another's now, or done; whoever held it must stop and publish nothing."""
+
+    def __init__(self, site: str, through: str, token: int, reason: str) -> None:
+        self.token = token
+        super().__init__(
+            f"site {site}, through {through}: claim with token {token} is lost ({reason}). "
+            "Nothing was published; the next tick looks again at what is due."
+        )
+
+
 class FaultyFileError(ConfigError):
     """A declared file has faults; all of them are listed at once.
 
