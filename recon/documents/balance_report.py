@@ -220,14 +220,16 @@ def _estimate_rows(estimates: Iterable[Estimate]) -> list[list[str]]:
     rows = [["amount", "quantity", "value", "±", ""]]
     for e in estimates:
         place = name_of(e.unknown).rsplit(" ", 1)[0]
-        quantity = e.unknown.quantity + (" fraction" if e.fraction else "")
+        quantity = e.unknown.quantity + (" %" if e.fraction else "")
+        shown = 100.0 if e.fraction else 1.0
         if e.unknown.quantity == MASS:
             quantity = "dry mass"
         unsure = e.value is not None and e.u is not None and e.u > abs(e.value) > 0
         words = e.reason or ("at a bound" if e.at_bound else "")
         if unsure:
             words = f"{words}; ± exceeds the value".removeprefix("; ")
-        rows.append([place, quantity, _number(e.value), _number(e.u, 3), words])
+        value, u = (None if v is None else v * shown for v in (e.value, e.u))
+        rows.append([place, quantity, _number(value), _number(u, 3), words])
     return rows
 
 

@@ -34,7 +34,7 @@ def test_no_path_of_a_machine_and_no_package_index_stands_in_the_project() -> No
         "-".join(w) for w in (("index", "url"), ("find", "links"), ("trusted", "host"))
     )
     pattern = re.compile(rf"(^|[^\w./-])/(work|root)/|{index}")
-    kinds = ("*.py", "*.sql", "*.toml", "*.md", "*.txt")
+    kinds = ("*.py", "*.sql", "*.toml", "*.md", "*.txt", "*.lock")
     found = [
         f"{p.relative_to(ROOT)}:{n}"
         for kind in kinds
