@@ -7,7 +7,7 @@ unscaled, such problems end "optimal" tens of standard uncertainties away from t
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -163,16 +163,11 @@ def _without_standing(fit: Readings, stopped: NDArray[np.bool_]) -> Readings:
     if not stopped.any():
         return fit
     running = sparse.diags_array(np.where(stopped, 0.0, 1.0))
-    return Readings(
-        measurements=fit.measurements,
+    return replace(
+        fit,
         of=sparse.csr_array(running @ fit.of),
         over=sparse.csr_array(running @ fit.over),
         ratio=fit.ratio & ~stopped,
-        gather=fit.gather,
-        relative=fit.relative,
-        absolute=fit.absolute,
-        value=fit.value,
-        u=fit.u,
     )
 
 
