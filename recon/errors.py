@@ -130,3 +130,26 @@ class NotAcceptedError(SolveError):
     def __init__(self, reasons: Sequence[str]) -> None:
         self.reasons = tuple(reasons)
         super().__init__("No answer passed the acceptance checks. " + " ".join(self.reasons))
+
+
+class AlreadyServedError(ConflictError):
+    """Another process serves this embedded book; status 75 tells a supervisor to leave it be."""
+
+    status = 75
+
+    def __init__(self, book: str, holder: str) -> None:
+        self.holder = holder
+        super().__init__(
+            f"{book} is already served by {holder}. An embedded book has one service at a time: "
+            "stop that one first, or keep the book on a PostgreSQL server."
+        )
+
+
+class AddressTakenError(ConfigError):
+    """The health page's address cannot be had."""
+
+    def __init__(self, host: str, port: int, reason: str) -> None:
+        super().__init__(
+            f"health page: {host} port {port} cannot be used ({reason}). Set health_port to a free "
+            "port, or to 0 for any."
+        )
