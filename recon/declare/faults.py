@@ -68,6 +68,8 @@ def _words(item: Any, adapter: TypeAdapter[Any]) -> str:
         return f"{head}is required and missing."
     if kind == "finite_number":
         return f"{head}a finite number is expected, found {found}."
+    if kind == "tuple_type":
+        return f"{head}a list is expected, found {found!r}."
     return f"{head}{item['msg'][0].lower()}{item['msg'][1:]}, found {found!r}."
 
 
