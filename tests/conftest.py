@@ -6,6 +6,10 @@ import os
 
 from hypothesis import settings
 
+from tests.stores import database_url, postgres, postgres_url
+
+__all__ = ["database_url", "postgres", "postgres_url"]
+
 os.environ.setdefault("OMP_NUM_THREADS", "1")
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 

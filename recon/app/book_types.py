@@ -266,6 +266,27 @@ class RunHead:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Standing:
+    """
+    Where the pointer of a month through a day stands.
+
+    Attributes
+    ----------
+    knowledge_cut : datetime
+        What was known by then is in the run, whether it was computed then or found still right.
+    moved_at : datetime
+        When the pointer moved or was confirmed.
+    """
+
+    month: date
+    through: date
+    run: int
+    data_digest: str
+    knowledge_cut: datetime
+    moved_at: datetime
+
+
+@dataclass(frozen=True, kw_only=True)
 class Progress:
     """What long work is doing: ``done`` of ``total`` steps, in words."""
 

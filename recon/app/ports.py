@@ -16,6 +16,7 @@ from recon.app.book_types import (
     Proposal,
     Pulled,
     RunHead,
+    Standing,
     StoredVersion,
     Watermark,
 )
@@ -214,6 +215,27 @@ class Book(Protocol):
 
     def current(self, site: str, month: date, through: date | None = None) -> RunHead | None:
         """Give the run that speaks for a month through a day; without one, its latest day."""
+        ...
+
+    def standing(self, site: str) -> tuple[Standing, ...]:
+        """List where every pointer stands, by month and day."""
+        ...
+
+    def confirm(
+        self, standing: Standing, site: str, *, knowledge_cut: datetime, at: datetime
+    ) -> None:
+        """Note that a current run is still right at a later cut; no move, so no audit entry."""
+        ...
+
+    def arrivals(
+        self, site: str, *, since: datetime, until: datetime, after: datetime
+    ) -> tuple[datetime, datetime] | None:
+        """
+        Give the earliest and latest time at which rows of a span became known after a cut.
+
+        Rows are tag days and records whose span touches ``[since, until)``; known is the later of
+        a row's own known-at and when it was first seen. None where nothing came.
+        """
         ...
 
     def runs(self, site: str, month: date | None = None) -> tuple[RunHead, ...]:
