@@ -53,6 +53,14 @@ class Plant(Protocol):
         """
         ...
 
+    def query(self, kind: RowKind) -> str:
+        """
+        Say what is asked of the source for one kind of row: SQL text, or a sheet and its digest.
+
+        Kept as evidence beside the rows; never holds a password.
+        """
+        ...
+
 
 class Book(Protocol):
     """
