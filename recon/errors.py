@@ -46,6 +46,43 @@ class ConflictError(ReconError):
     """Somebody else changed or holds what this step needs; nothing was written."""
 
 
+class BookUnavailableError(DataError):
+    """The accounting database cannot be reached or used; nothing was written."""
+
+    def __init__(self, place: str, said: str) -> None:
+        self.place = place
+        super().__init__(
+            f"accounting database {place}: {said}. Nothing was written; check the address, the "
+            "server and its disk, then try again."
+        )
+
+
+class OldBookError(DataError):
+    """The accounting database has another schema than this program expects."""
+
+    def __init__(self, place: str, said: str) -> None:
+        super().__init__(f"accounting database {place}: {said}")
+
+
+class DamagedBookError(AuditError):
+    """The accounting database, or a part of it, is not what was written; no number is given."""
+
+    def __init__(self, place: str, said: str) -> None:
+        self.place = place
+        super().__init__(
+            f"accounting database {place} is damaged: {said}. No number of it is shown. Restore "
+            "the last good copy beside it and compare with `recon verify`."
+        )
+
+
+class AlteredRecordError(AuditError):
+    """A stored row, chunk or trigger is not what its digest says."""
+
+    def __init__(self, what: str, expected: str, found: str) -> None:
+        self.what = what
+        super().__init__(f"{what}: expected {expected}, found {found}. No number of it is shown.")
+
+
 class LostClaimError(ConflictError):
     """A claim is another's now, or done; whoever held it must stop and publish nothing."""
 

@@ -1,7 +1,19 @@
--- 0001: the book. Every table carries the site in its key; all but claim, watermark, progress and
--- current_run are append-only. Times are UTC; days are plant days; values are tonnes or fractions.
+-- 0001: the book. Every table carries the site in its key; all but current_run, claim, watermark
+-- and progress are append-only.
+-- Times are UTC; days are plant days; amounts are tonnes,
+-- fractions mass fractions, u a standard uncertainty. A missing number is null, with a reason beside it.
 
--- A version of a site's declaration; a balance names the digests it used.
+-- Which numbered files have been applied, each recorded in the transaction that applied it.
+CREATE TABLE schema_migration (
+    number bigint NOT NULL,
+    name text NOT NULL,
+    sha256 text NOT NULL,
+    applied_at timestamptz NOT NULL,
+    applied_by text NOT NULL,
+    PRIMARY KEY (number)
+);
+
+-- A version of a site's declaration as written; a balance names the digests it used.
 CREATE TABLE site_version (
     site text NOT NULL,
     digest text NOT NULL,
@@ -12,7 +24,16 @@ CREATE TABLE site_version (
     PRIMARY KEY (site, digest)
 );
 
--- Rows as returned by a source, compressed, addressed by the digest of their canonical bytes.
+-- What a source was asked: SQL, or name and digest of a sheet.
+CREATE TABLE source_query (
+    site text NOT NULL,
+    digest text NOT NULL,
+    content text NOT NULL,
+    first_seen timestamptz NOT NULL,
+    PRIMARY KEY (site, digest)
+);
+
+-- Rows as a source returned them, compressed with zlib, addressed by the SHA-256 of the uncompressed bytes.
 CREATE TABLE evidence_chunk (
     site text NOT NULL,
     digest text NOT NULL,
@@ -20,13 +41,14 @@ CREATE TABLE evidence_chunk (
     subject text NOT NULL,
     day date NOT NULL,
     row_count bigint NOT NULL,
-    query_digest text NOT NULL,
+    query text NOT NULL,
     first_seen timestamptz NOT NULL,
     content bytea NOT NULL,
-    PRIMARY KEY (site, digest)
+    PRIMARY KEY (site, digest),
+    FOREIGN KEY (site, query) REFERENCES source_query (site, digest)
 );
 
--- The chunks in force at a knowledge cut; addressed by its digest.
+-- The chunks a run rests on, one digest a line, compressed; addressed by the SHA-256 of those lines.
 CREATE TABLE evidence_manifest (
     site text NOT NULL,
     digest text NOT NULL,
@@ -35,49 +57,93 @@ CREATE TABLE evidence_manifest (
     PRIMARY KEY (site, digest)
 );
 
--- One row in force: a record of a source, or one tag's day of readings (value = amount or mean, chunk = its rows).
-CREATE TABLE input_row (
+-- One tag's plant day of readings, integrated; the one seen last at a knowledge cut is in force. Hours; amount in the tag's unit x h.
+CREATE TABLE tag_day (
     site text NOT NULL,
-    kind text NOT NULL,
-    natural_key text NOT NULL,
-    known_at timestamptz NOT NULL,
-    true_from timestamptz NOT NULL,
-    true_to timestamptz NOT NULL,
+    tag text NOT NULL,
+    day date NOT NULL,
     first_seen timestamptz NOT NULL,
-    value double precision,
-    unit text NOT NULL,
-    stage text NOT NULL,
     chunk text NOT NULL,
-    PRIMARY KEY (site, kind, natural_key, known_at, chunk)
+    amount double precision,
+    covered_hours double precision NOT NULL,
+    day_hours double precision NOT NULL,
+    running_hours double precision NOT NULL,
+    mean double precision,
+    readings bigint NOT NULL,
+    bad bigint NOT NULL,
+    last_known timestamptz NOT NULL,
+    PRIMARY KEY (site, tag, day, first_seen),
+    FOREIGN KEY (site, chunk) REFERENCES evidence_chunk (site, digest)
 );
 
--- What a person decided: set aside, corrected reading, override, setting, held figure, site version, reopening.
+-- An assay, ticket, survey item or event; of one natural key (document, subject, item, stage) the latest known at a cut is in force.
+CREATE TABLE record (
+    site text NOT NULL,
+    kind text NOT NULL,
+    document text NOT NULL,
+    subject text NOT NULL,
+    item text NOT NULL,
+    stage text NOT NULL,
+    known_at timestamptz NOT NULL,
+    first_seen timestamptz NOT NULL,
+    true_from timestamptz NOT NULL,
+    true_to timestamptz NOT NULL,
+    value double precision,
+    unit text NOT NULL,
+    lot text NOT NULL,
+    extra text NOT NULL,
+    chunk text NOT NULL,
+    PRIMARY KEY (site, kind, document, subject, item, stage, known_at, first_seen),
+    FOREIGN KEY (site, chunk) REFERENCES evidence_chunk (site, digest),
+    CHECK (kind IN ('assay', 'ticket', 'survey', 'event'))
+);
+
+-- What changed, vanished or came back at a source after the book had it.
+CREATE TABLE source_change (
+    site text NOT NULL,
+    kind text NOT NULL,
+    subject text NOT NULL,
+    noticed_at timestamptz NOT NULL,
+    change text NOT NULL,
+    true_from timestamptz NOT NULL,
+    true_to timestamptz NOT NULL,
+    content text NOT NULL,
+    evidence text NOT NULL,
+    PRIMARY KEY (site, kind, subject, noticed_at),
+    CHECK (change IN ('changed-at-source', 'vanished-at-source', 'back-at-source'))
+);
+
+-- What a person decided: set aside, corrected reading, override, setting, held figure, withdrawal, site version, reopening.
 CREATE TABLE decision (
     site text NOT NULL,
     decision text NOT NULL,
     kind text NOT NULL,
     subject text NOT NULL,
-    true_from timestamptz,
-    true_to timestamptz,
-    content text NOT NULL,
+    first_day date,
+    last_day date,
+    value double precision,
     reason text NOT NULL,
     evidence text NOT NULL,
     previews bigint NOT NULL,
+    needs_approval boolean NOT NULL,
     made_by text NOT NULL,
     made_at timestamptz NOT NULL,
-    PRIMARY KEY (site, decision)
+    PRIMARY KEY (site, decision),
+    UNIQUE (site, decision, made_by)
 );
 
--- Approval of a decision by another person, naming the digest of what was seen.
+-- The answer of another person to a decision, naming the digest of what was seen.
 CREATE TABLE decision_approval (
     site text NOT NULL,
     decision text NOT NULL,
+    made_by text NOT NULL,
     approved_by text NOT NULL,
     approved_at timestamptz NOT NULL,
     digest_seen text NOT NULL,
     granted boolean NOT NULL,
-    PRIMARY KEY (site, decision, approved_by),
-    FOREIGN KEY (site, decision) REFERENCES decision (site, decision)
+    PRIMARY KEY (site, decision),
+    FOREIGN KEY (site, decision, made_by) REFERENCES decision (site, decision, made_by),
+    CHECK (approved_by <> made_by)
 );
 
 -- One computation; kind 'published' is unique by its data digest, other kinds are previews and re-runs.
@@ -93,14 +159,15 @@ CREATE TABLE run (
     manifest text NOT NULL,
     site_versions text NOT NULL,
     method text NOT NULL,
-    result_digest text NOT NULL,
     summary text NOT NULL,
+    result_digest text NOT NULL,
     published_at timestamptz NOT NULL,
     PRIMARY KEY (site, run),
+    FOREIGN KEY (site, manifest) REFERENCES evidence_manifest (site, digest),
     CHECK (kind IN ('published', 'preview', 'as-known-at', 'window', 'prior-period'))
 );
 
--- A measurement of a run with what the fit made of it, canonical units.
+-- A measurement of a run with what the fit made of it, canonical units; a fraction's unit is 1.
 CREATE TABLE measurement (
     site text NOT NULL,
     run bigint NOT NULL,
@@ -158,15 +225,16 @@ CREATE TABLE source_offset (
     FOREIGN KEY (site, run) REFERENCES run (site, run)
 );
 
--- What a check or screen found in a run.
+-- What a check or screen found in a run, in the order found; day where it belongs to one.
 CREATE TABLE finding (
     site text NOT NULL,
     run bigint NOT NULL,
     seq bigint NOT NULL,
     code text NOT NULL,
     subject text NOT NULL,
-    day date,
     severity text NOT NULL,
+    day date,
+    period bigint,
     content text NOT NULL,
     evidence text NOT NULL,
     PRIMARY KEY (site, run, seq),
@@ -206,14 +274,30 @@ CREATE TABLE table_cell (
     FOREIGN KEY (site, run) REFERENCES run (site, run)
 );
 
--- Which run speaks for a month through a day; moved by the publisher only, each move is an audit entry.
-CREATE TABLE current_run (
+-- A stock at the end of a run's last day as the measured chain states it [t]: the next month's opening, with booked lines.
+CREATE TABLE closing_stock (
     site text NOT NULL,
-    month date NOT NULL,
-    through_day date NOT NULL,
     run bigint NOT NULL,
-    moved_at timestamptz NOT NULL,
-    PRIMARY KEY (site, month, through_day),
+    node text NOT NULL,
+    quantity text NOT NULL,
+    value double precision,
+    u double precision,
+    basis text NOT NULL,
+    booked double precision NOT NULL,
+    PRIMARY KEY (site, run, node, quantity),
+    FOREIGN KEY (site, run) REFERENCES run (site, run)
+);
+
+-- A leaf of a run's month that the year to date of later months adds [t].
+CREATE TABLE year_leaf (
+    site text NOT NULL,
+    run bigint NOT NULL,
+    month text NOT NULL,
+    table_name text NOT NULL,
+    row_key text NOT NULL,
+    column_key text NOT NULL,
+    value double precision NOT NULL,
+    PRIMARY KEY (site, run, month, table_name, row_key, column_key),
     FOREIGN KEY (site, run) REFERENCES run (site, run)
 );
 
@@ -249,7 +333,8 @@ CREATE TABLE prior_period_adjustment (
     delta_unaccounted double precision NOT NULL,
     named_by text NOT NULL,
     content text NOT NULL,
-    PRIMARY KEY (site, booked_month, seq, component)
+    PRIMARY KEY (site, booked_month, seq, component),
+    CHECK (class IN ('estimate', 'error', 'software'))
 );
 
 -- A statement or workbook as issued, byte for byte.
@@ -277,6 +362,18 @@ CREATE TABLE audit_entry (
     PRIMARY KEY (site, seq)
 );
 
+-- Which run speaks for a month through a day; moved by the publisher only, each move is an audit entry.
+CREATE TABLE current_run (
+    site text NOT NULL,
+    month date NOT NULL,
+    through_day date NOT NULL,
+    run bigint NOT NULL,
+    knowledge_cut timestamptz NOT NULL,
+    moved_at timestamptz NOT NULL,
+    PRIMARY KEY (site, month, through_day),
+    FOREIGN KEY (site, run) REFERENCES run (site, run)
+);
+
 -- Who computes a month through a day; the token fences off everybody before.
 CREATE TABLE claim (
     site text NOT NULL,
@@ -284,6 +381,8 @@ CREATE TABLE claim (
     through_day date NOT NULL,
     owner text NOT NULL,
     token bigint NOT NULL,
+    data_digest text NOT NULL,
+    knowledge_cut timestamptz NOT NULL,
     lease_until timestamptz NOT NULL,
     done boolean NOT NULL,
     PRIMARY KEY (site, month, through_day)
@@ -313,18 +412,36 @@ CREATE TABLE progress (
 -- One published run a month, day and data digest.
 CREATE UNIQUE INDEX run_published ON run (site, month, through_day, data_digest) WHERE kind = 'published';
 
--- Append-only, also against TRUNCATE and against a session that plays replica.
+-- Records of a span of time.
+CREATE INDEX record_span ON record (site, kind, true_from);
+
+-- Tag days of a span of days.
+CREATE INDEX tag_day_span ON tag_day (site, day);
+
+-- Append-only, also against TRUNCATE and against a session that plays replica (ENABLE ALWAYS).
 CREATE FUNCTION refuse_change() RETURNS trigger LANGUAGE plpgsql AS $$
 BEGIN
-    RAISE EXCEPTION '% is append-only', TG_TABLE_NAME;
+    RAISE EXCEPTION '% is append-only', TG_TABLE_NAME USING ERRCODE = 'restrict_violation';
 END
 $$;
+CREATE TRIGGER schema_migration_no_change BEFORE UPDATE OR DELETE ON schema_migration
+    FOR EACH ROW EXECUTE FUNCTION refuse_change();
+CREATE TRIGGER schema_migration_no_truncate BEFORE TRUNCATE ON schema_migration
+    FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
+ALTER TABLE schema_migration ENABLE ALWAYS TRIGGER schema_migration_no_change;
+ALTER TABLE schema_migration ENABLE ALWAYS TRIGGER schema_migration_no_truncate;
 CREATE TRIGGER site_version_no_change BEFORE UPDATE OR DELETE ON site_version
     FOR EACH ROW EXECUTE FUNCTION refuse_change();
 CREATE TRIGGER site_version_no_truncate BEFORE TRUNCATE ON site_version
     FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
 ALTER TABLE site_version ENABLE ALWAYS TRIGGER site_version_no_change;
 ALTER TABLE site_version ENABLE ALWAYS TRIGGER site_version_no_truncate;
+CREATE TRIGGER source_query_no_change BEFORE UPDATE OR DELETE ON source_query
+    FOR EACH ROW EXECUTE FUNCTION refuse_change();
+CREATE TRIGGER source_query_no_truncate BEFORE TRUNCATE ON source_query
+    FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
+ALTER TABLE source_query ENABLE ALWAYS TRIGGER source_query_no_change;
+ALTER TABLE source_query ENABLE ALWAYS TRIGGER source_query_no_truncate;
 CREATE TRIGGER evidence_chunk_no_change BEFORE UPDATE OR DELETE ON evidence_chunk
     FOR EACH ROW EXECUTE FUNCTION refuse_change();
 CREATE TRIGGER evidence_chunk_no_truncate BEFORE TRUNCATE ON evidence_chunk
@@ -337,12 +454,24 @@ CREATE TRIGGER evidence_manifest_no_truncate BEFORE TRUNCATE ON evidence_manifes
     FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
 ALTER TABLE evidence_manifest ENABLE ALWAYS TRIGGER evidence_manifest_no_change;
 ALTER TABLE evidence_manifest ENABLE ALWAYS TRIGGER evidence_manifest_no_truncate;
-CREATE TRIGGER input_row_no_change BEFORE UPDATE OR DELETE ON input_row
+CREATE TRIGGER tag_day_no_change BEFORE UPDATE OR DELETE ON tag_day
     FOR EACH ROW EXECUTE FUNCTION refuse_change();
-CREATE TRIGGER input_row_no_truncate BEFORE TRUNCATE ON input_row
+CREATE TRIGGER tag_day_no_truncate BEFORE TRUNCATE ON tag_day
     FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
-ALTER TABLE input_row ENABLE ALWAYS TRIGGER input_row_no_change;
-ALTER TABLE input_row ENABLE ALWAYS TRIGGER input_row_no_truncate;
+ALTER TABLE tag_day ENABLE ALWAYS TRIGGER tag_day_no_change;
+ALTER TABLE tag_day ENABLE ALWAYS TRIGGER tag_day_no_truncate;
+CREATE TRIGGER record_no_change BEFORE UPDATE OR DELETE ON record
+    FOR EACH ROW EXECUTE FUNCTION refuse_change();
+CREATE TRIGGER record_no_truncate BEFORE TRUNCATE ON record
+    FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
+ALTER TABLE record ENABLE ALWAYS TRIGGER record_no_change;
+ALTER TABLE record ENABLE ALWAYS TRIGGER record_no_truncate;
+CREATE TRIGGER source_change_no_change BEFORE UPDATE OR DELETE ON source_change
+    FOR EACH ROW EXECUTE FUNCTION refuse_change();
+CREATE TRIGGER source_change_no_truncate BEFORE TRUNCATE ON source_change
+    FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
+ALTER TABLE source_change ENABLE ALWAYS TRIGGER source_change_no_change;
+ALTER TABLE source_change ENABLE ALWAYS TRIGGER source_change_no_truncate;
 CREATE TRIGGER decision_no_change BEFORE UPDATE OR DELETE ON decision
     FOR EACH ROW EXECUTE FUNCTION refuse_change();
 CREATE TRIGGER decision_no_truncate BEFORE TRUNCATE ON decision
@@ -397,6 +526,18 @@ CREATE TRIGGER table_cell_no_truncate BEFORE TRUNCATE ON table_cell
     FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
 ALTER TABLE table_cell ENABLE ALWAYS TRIGGER table_cell_no_change;
 ALTER TABLE table_cell ENABLE ALWAYS TRIGGER table_cell_no_truncate;
+CREATE TRIGGER closing_stock_no_change BEFORE UPDATE OR DELETE ON closing_stock
+    FOR EACH ROW EXECUTE FUNCTION refuse_change();
+CREATE TRIGGER closing_stock_no_truncate BEFORE TRUNCATE ON closing_stock
+    FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
+ALTER TABLE closing_stock ENABLE ALWAYS TRIGGER closing_stock_no_change;
+ALTER TABLE closing_stock ENABLE ALWAYS TRIGGER closing_stock_no_truncate;
+CREATE TRIGGER year_leaf_no_change BEFORE UPDATE OR DELETE ON year_leaf
+    FOR EACH ROW EXECUTE FUNCTION refuse_change();
+CREATE TRIGGER year_leaf_no_truncate BEFORE TRUNCATE ON year_leaf
+    FOR EACH STATEMENT EXECUTE FUNCTION refuse_change();
+ALTER TABLE year_leaf ENABLE ALWAYS TRIGGER year_leaf_no_change;
+ALTER TABLE year_leaf ENABLE ALWAYS TRIGGER year_leaf_no_truncate;
 CREATE TRIGGER closing_event_no_change BEFORE UPDATE OR DELETE ON closing_event
     FOR EACH ROW EXECUTE FUNCTION refuse_change();
 CREATE TRIGGER closing_event_no_truncate BEFORE TRUNCATE ON closing_event

@@ -30,6 +30,7 @@ def test_a_database_made_from_a_template_holds_what_the_template_held(postgres: 
         postgres.drop(name)
 
 
+@pytest.mark.slow
 def test_a_server_that_was_killed_comes_back_and_one_that_is_stopped_is_gone() -> None:
     server = Server(durable=True)
     try:
