@@ -190,3 +190,29 @@ class AddressTakenError(ConfigError):
             f"health page: {host} port {port} cannot be used ({reason}). Set health_port to a free "
             "port, or to 0 for any."
         )
+
+
+class ForbiddenStepError(ConflictError):
+    """A month may not take this step, or not by this person."""
+
+    def __init__(self, month: str, step: str, reason: str) -> None:
+        super().__init__(f"{month}: cannot {step}: {reason}.")
+
+
+class StaleViewError(ConflictError):
+    """What a person looked at is no longer what is current; nothing was written."""
+
+    def __init__(self, month: str, seen: str, current: str) -> None:
+        super().__init__(
+            f"{month}: you name the digest {seen[:16] or '(none)'}, current is {current[:16]}. "
+            "Look at the statement again, then name its digest."
+        )
+
+
+class BlockedError(ConflictError):
+    """Something blocks the close of a month; all of it is listed."""
+
+    def __init__(self, month: str, step: str, blockers: Sequence[str]) -> None:
+        self.blockers = tuple(blockers)
+        lines = "".join(f"\n  - {blocker}" for blocker in self.blockers)
+        super().__init__(f"{month}: cannot {step} yet:{lines}")

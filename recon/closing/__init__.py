@@ -1,0 +1,1 @@
+"""A month's states, the two-person rule, and what late data change: pure, no database."""
