@@ -83,7 +83,7 @@ def test_a_closed_month_is_never_due(calendar: Calendar, now: datetime, closed: 
     assert not closed & {d.month for d in ask(calendar, now, {}, news, tuple(closed))}
 
 
-@settings(max_examples=30)
+@settings(max_examples=15)
 @given(calendars, st.sets(st.integers(0, 40), max_size=30))
 def test_an_outage_is_caught_up_to_the_same_runs(calendar: Calendar, down: set[int]) -> None:
     """A service that looks every day, and one that was down on some, end with the same runs."""
@@ -99,7 +99,7 @@ def test_an_outage_is_caught_up_to_the_same_runs(calendar: Calendar, down: set[i
     assert steady.keys() == patchy.keys()
 
 
-@settings(max_examples=40)
+@settings(max_examples=20)
 @given(st.lists(st.integers(1, 3 * 24 * 60), min_size=1, max_size=60), st.integers(10, 90))
 def test_late_data_are_taken_in_soon_and_not_too_often(minutes: list[int], step: int) -> None:
     """Whatever comes is in a run at most six hours later; the same period runs six hours apart."""
