@@ -22,7 +22,7 @@ if TYPE_CHECKING:
     from recon.reconcile.problem import Draw, Measurement
     from recon.reconcile.solver import Engine
     from recon.suspects.alarm import Alarm
-    from recon.suspects.single import Suspect
+    from recon.suspects.naming import Suspect
 
 
 @dataclass(frozen=True, kw_only=True)

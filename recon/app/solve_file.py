@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 from recon.declare.balance_file import read_balance
 from recon.reconcile.read import reconcile
 from recon.suspects.alarm import Alarm, raise_alarm
-from recon.suspects.single import Suspect, most_likely
+from recon.suspects.naming import Suspect, name_suspects
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Mapping
@@ -62,5 +62,5 @@ def solve_file(
         title=balance.title,
         answer=answer,
         alarm=alarm,
-        suspects=most_likely(answer, alarm),
+        suspects=name_suspects(answer, alarm),
     )

@@ -11,7 +11,7 @@ from scipy.stats import chi2, norm
 from recon.findings import Finding, Severity
 from recon.reconcile.figures import REDUNDANT
 from recon.suspects.alarm import Alarm, raise_alarm, standardised
-from recon.suspects.single import Suspect, most_likely
+from recon.suspects.naming import Suspect, name_suspects
 
 if TYPE_CHECKING:
     from recon.reconcile.answer import Answer
@@ -42,7 +42,7 @@ def suspicion_of(answer: Answer, level: float) -> Suspicion:
     tests = answer.tests
     small = int(np.count_nonzero(tests.leverage > REDUNDANT)) <= SIMULATED
     alarm = raise_alarm(tests, level) if small else bounded_alarm(tests, level)
-    return Suspicion(alarm=alarm, suspects=most_likely(answer, alarm))
+    return Suspicion(alarm=alarm, suspects=name_suspects(answer, alarm))
 
 
 def bounded_alarm(tests: Sensitivities, level: float) -> Alarm:

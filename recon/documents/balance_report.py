@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 from recon.findings import Statistic
 from recon.flowsheet.balances import Amount, name_of
 from recon.flowsheet.network import MASS
+from recon.suspects.words import sentence_on
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
@@ -64,6 +65,15 @@ def as_object(solved: SolvedFile) -> dict[str, Any]:
                 "u": s.u,
                 "unit": s.unit,
                 "probability": s.probability,
+                "certainty": s.certainty,
+                "copper": s.copper,
+                "period": s.period,
+                "balances": [{"name": n, "standardised": z} for n, z in s.balances],
+                "alternatives": [
+                    {"kind": a.kind, "name": a.name, "period": a.period, "share": a.share}
+                    for a in s.alternatives
+                ],
+                "note": s.note,
             }
             for s in solved.suspects
         ],
@@ -170,17 +180,9 @@ def as_text(solved: SolvedFile) -> str:
         )
     else:
         lines.append(f"Nothing is tested: {test.reason}.")
-    for suspect in solved.suspects:
-        if not suspect.names:
-            lines.append("Suspect: no single instrument or source explains the residuals.")
-            continue
-        lines.append(
-            f"Suspect ({suspect.kind}): {' or '.join(suspect.names)} reads "
-            f"{'high' if (suspect.size or 0) > 0 else 'low'} by {abs(suspect.size or 0):.4g} ± "
-            f"{suspect.u:.2g} {suspect.unit} (probability {suspect.probability:.2f} among single "
-            "faults). It agrees no longer with its neighbours; that is no statement on any "
-            "protective duty."
-        )
+    lines += [sentence_on(suspect) for suspect in solved.suspects]
+    if solved.suspects:
+        lines.append("None of this is a statement on any protective duty.")
     lines += ["", *_table(_reading_rows(answer.measurements)), ""]
     lines += _table(_estimate_rows(answer.estimates))
     if answer.figures:

@@ -41,7 +41,7 @@ def test_the_table_names_the_suspect() -> None:
     ended = recon("solve", "config/balances/exchanger.toml")
     assert ended.returncode == 0
     assert "Alarm RAISED" in ended.stdout
-    assert "Suspect (meter): F2 reads high" in ended.stdout
+    assert "meter F2: reads high by" in ended.stdout
 
 
 def test_all_faults_of_a_file_are_listed_at_once(tmp_path: Path) -> None:
