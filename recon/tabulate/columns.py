@@ -342,17 +342,6 @@ TABLES: tuple[Table, ...] = (
         ),
     ),
     Table(
-        name="daily",
-        title="Daily table",
-        row="day and figure or section",
-        columns=(
-            _c("measured_in", "In, measured", "Sum of printed leaves of the day."),
-            _c("measured_out", "Out, measured", "Sum of printed leaves of the day."),
-            _c("fitted_in", "In, fitted", "Slice of the month's fit."),
-            _c("fitted_out", "Out, fitted", "Slice of the month's fit."),
-        ),
-    ),
-    Table(
         name="residues",
         title="Rounding residues",
         row="table and row",

@@ -87,6 +87,13 @@ class Fitted:
         """Whether the fit knows an unknown at all."""
         return unknown in self._answer.state.index
 
+    def plain(self, form: Linear) -> float | None:
+        """Evaluate a sum at the solution, determined or not; None where the fit lacks a term."""
+        index, x = self._answer.state.index, self._answer.solution.point.x
+        if not all(self.has(u) for u, _ in form):
+            return None
+        return float(sum(c * x[index[u]] for u, c in form))
+
     def ratios(self, asked: Sequence[Ratio]) -> list[Fit]:
         """Evaluate sums, or ratios of sums, with their joint uncertainty."""
         result: list[Fit] = []

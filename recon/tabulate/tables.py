@@ -17,11 +17,14 @@ from typing import TYPE_CHECKING
 
 from recon.tabulate.as_measured import AsMeasured
 from recon.tabulate.balance_table import headline, write_balances
+from recon.tabulate.bridge import write_bridge
+from recon.tabulate.closure_table import write_closure
 from recon.tabulate.fitted import Fitted
 from recon.tabulate.leaves import Booked, Year, YearLeaf
 from recon.tabulate.measured_table import write_measured
 from recon.tabulate.month import Month, Sheet
-from recon.tabulate.stock_table import closing_stocks
+from recon.tabulate.recovery_table import write_recoveries
+from recon.tabulate.stock_table import write_stocks
 from recon.tabulate.stream_table import write_streams
 
 if TYPE_CHECKING:
@@ -103,12 +106,16 @@ def tables_of(
     )
     sheet = Sheet(month=month)
     accounts = write_balances(sheet)
+    write_bridge(sheet, accounts.values())
     write_streams(sheet)
     write_measured(sheet)
+    write_closure(sheet)
+    closing = write_stocks(sheet)
+    write_recoveries(sheet)
     sheet.findings += headline(accounts, sheet)
     return Tables(
         cells=tuple(sheet.cells),
-        closing=closing_stocks(month),
+        closing=closing,
         leaves=tuple(sheet.leaves),
         findings=tuple(sheet.findings),
     )

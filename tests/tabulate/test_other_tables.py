@@ -1,0 +1,154 @@
+"""Bridge, node closure, stocks and recoveries."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import pytest
+from uncertainties import ufloat
+
+from recon.declare.site import SiteStream
+from recon.ingest.measured import Correction
+from tests.tabulate.cells import cell, value
+from tests.tabulate.paper import Paper, mill_site, simple_month
+from tests.tabulate.test_tables import mill_month
+
+
+def corrected_month() -> Paper:
+    """OUT read 230 on both days; one decision corrects by 1.05, another sets an IN aside."""
+    paper = simple_month()
+    paper.measured = [m for m in paper.measured if m.tag not in ("OUT Cu", "IN Cu")]
+    for p in (1, 2):
+        step = Correction(
+            decision="d1" * 20,
+            kind="corrected reading",
+            before=230.0,
+            after=241.5,
+            reason="scale read 5 % low since its check",
+            by="A. Assayer",
+        )
+        paper.amount(p, "OUT", 241.5, corrections=(step,))
+        paper.amount(p, "IN", 250.0, tag="IN second scale")
+    aside = Correction(
+        decision="d2" * 20, kind="set aside", before=300.0, after=None, reason="stuck", by="B. Bee"
+    )
+    paper.amount(1, "IN", 300.0, corrections=(aside,), set_aside=True)
+    paper.site = simple_month().site
+    return paper
+
+
+def test_the_bridge_goes_from_as_read_over_each_decision_to_stated() -> None:
+    tables = corrected_month().tables()
+    table = "unaccounted-bridge"
+    as_read = value(tables, table, "Cu 000 as read", "unaccounted")
+    # IN Cu is declared before the second scale, so as read it counted: 300 on day 1
+    assert as_read == pytest.approx(1000 + 300 + 250 - 460 - 1010)
+    rows = {c.row for c in tables.cells if c.table == table and c.row.startswith("Cu ")}
+    assert rows == {
+        "Cu 000 as read",
+        "Cu 001 d1d1d1d1d1d1",
+        "Cu 002 d2d2d2d2d2d2",
+        "Cu 999 stated",
+    }
+    effects = [
+        value(tables, table, row, "effect")
+        for row in ("Cu 001 d1d1d1d1d1d1", "Cu 002 d2d2d2d2d2d2")
+    ]
+    assert effects == pytest.approx([-23.0, -50.0])
+    stated = value(tables, table, "Cu 999 stated", "unaccounted")
+    assert stated == pytest.approx(as_read + sum(effects))
+    assert stated == pytest.approx(value(tables, "site-balance", "Cu", "unaccounted"))
+    words = cell(tables, table, "Cu 001 d1d1d1d1d1d1", "step").text
+    assert words == "OUT Cu: corrected reading, by A. Assayer: scale read 5 % low since its check"
+    assert cell(tables, "site-balance", "Cu", "products").basis == "corrected"
+
+
+def test_a_reading_set_aside_is_shown_with_what_the_fit_says_and_not_totalled() -> None:
+    tables = corrected_month().tables()
+    found = cell(tables, "measured-reconciled", "IN Cu", "word")
+    assert found.text == "set aside by decision"
+    assert value(tables, "measured-reconciled", "IN Cu", "measured") == 300.0
+    assert value(tables, "site-balance", "Cu", "receipts") == 500.0
+
+
+def test_node_closure_shows_the_raw_gap_and_that_the_fit_closes_it() -> None:
+    tables = mill_month().tables()
+    day = value(tables, "node-closure", "MILL mass", "raw_imbalance", "2026-01-01")
+    assert day == pytest.approx(1100 - 40 - 1058)
+    u = (5.5**2 + 0.2**2 + 5.29**2) ** 0.5
+    assert cell(tables, "node-closure", "MILL mass", "raw_imbalance", "2026-01-01").u == (
+        pytest.approx(u)
+    )
+    assert value(tables, "node-closure", "MILL mass", "z", "2026-01-01") == pytest.approx(2 / u)
+    for node in ("MILL", "SHED"):
+        for q in ("mass", "Cu"):
+            left = value(tables, "node-closure", f"{node} {q}", "reconciled_imbalance")
+            assert left == pytest.approx(0.0, abs=1e-6)
+
+
+def test_a_stock_node_is_not_closed_on_a_day_without_surveys_at_both_ends() -> None:
+    found = cell(mill_month().tables(), "node-closure", "SHED Cu", "raw_imbalance", "2026-01-01")
+    assert found.value is None
+    assert "not surveyed" in found.reason
+
+
+def test_stocks_stand_beside_the_fits_opinion() -> None:
+    tables = simple_month().tables()
+    assert value(tables, "stocks", "SHED Cu", "opening") == 1000.0
+    assert value(tables, "stocks", "SHED Cu", "closing") == 1010.0
+    assert value(tables, "stocks", "SHED Cu", "change") == 10.0
+    assert value(tables, "stocks", "SHED Cu", "closing_grade") == pytest.approx(25.0)
+    fitted = value(tables, "stocks", "SHED Cu", "fitted_closing")
+    assert value(tables, "stocks", "SHED Cu", "fitted_difference") == pytest.approx(fitted - 1010)
+    assert cell(tables, "stocks", "SHED Cu", "method").text == ("surveyed; opening is the take-on")
+
+
+def test_recovery_stands_four_ways() -> None:
+    tables = mill_month().tables()
+    feed = 11.0 + 11.02
+    product = 10.0 + 10.25
+    tail = 0.0008 * (1058 + 1060)
+    assert value(tables, "recoveries", "Cu recovery", "measured") == pytest.approx(
+        100 * product / feed, abs=0.01
+    )
+    assert value(tables, "recoveries", "Cu recovery", "built_up") == pytest.approx(
+        100 * product / (product + tail), abs=0.01
+    )
+    f, c, t = 1.0, 25.0, 0.08
+    assert value(tables, "recoveries", "Cu recovery", "two_product") == pytest.approx(
+        100 * c * (f - t) / (f * (c - t)), abs=0.01
+    )
+    fitted = value(tables, "recoveries", "Cu recovery", "fitted")
+    assert 88 < fitted < 96
+    assert value(tables, "recoveries", "Cu recovery", "fitted", "2026") == pytest.approx(
+        fitted, abs=0.01
+    )
+
+
+@pytest.mark.reference
+def test_two_product_recovery_has_the_uncertainty_of_its_three_grades() -> None:
+    """Outside judge: the `uncertainties` package on c (f - t) / (f (c - t))."""
+    paper = Paper(site=mill_site(), days=1)
+    for stream, mass in (("ORE", 1000.0), ("FEED", 1000.0), ("CONC", 40.0), ("TAIL", 960.0)):
+        paper.amount(1, stream, mass, quantity="mass", u=5.0)
+    for stream, percent, u in (("ORE", 1.0, 0.02), ("FEED", 1.0, 0.02), ("CONC", 25.0, 0.2)):
+        paper.grade([1], stream, percent, u=u)
+    paper.grade([1], "TAIL", 0.08, u=0.004)
+    paper.stock(0, 5000.0, quantity="mass")
+    paper.stock(0, 50.0)
+    found = cell(paper.tables(), "recoveries", "Cu recovery", "two_product")
+    f, c, t = ufloat(1.0, 0.02), ufloat(25.0, 0.2), ufloat(0.08, 0.004)
+    judged = 100 * c * (f - t) / (f * (c - t))
+    assert found.value == pytest.approx(judged.nominal_value)
+    assert found.u == pytest.approx(judged.std_dev)
+
+
+def test_a_recovery_with_a_second_feed_has_no_built_up_head() -> None:
+    paper = mill_month()
+    scats = SiteStream(name="SCATS", target="MILL", carries=("mass", "Cu"), role="receipt")
+    paper.site = replace(paper.site, streams=(*paper.site.streams, scats))
+    for p in (1, 2):
+        paper.amount(p, "SCATS", 1.0, quantity="mass")
+        paper.grade([p], "SCATS", 1.0)
+    found = cell(paper.tables(), "recoveries", "Cu recovery", "built_up")
+    assert found.reason == "SCATS enters beside the head"
