@@ -216,3 +216,71 @@ class BlockedError(ConflictError):
         self.blockers = tuple(blockers)
         lines = "".join(f"\n  - {blocker}" for blocker in self.blockers)
         super().__init__(f"{month}: cannot {step} yet:{lines}")
+
+
+class NoInstantError(DataError):
+    """A value of a source is not an instant.
+
+    Parameters
+    ----------
+    what : str
+        What it is instead.
+    found : object
+        The value.
+    """
+
+    def __init__(self, what: str, found: object) -> None:
+        self.what = what
+        self.found = found
+        super().__init__(f"{what}: {found!r}.")
+
+
+class PlantAddressError(ConfigError):
+    """The address of the plant's database cannot be used."""
+
+    def __init__(self, reason: str) -> None:
+        super().__init__(
+            f"address of the plant's database: {reason} Write sqlite:///path/to/file.sqlite or "
+            "postgresql://user@host/database."
+        )
+
+
+class PlantUnreachableError(DataError):
+    """The plant's database did not answer, though it was asked again and again."""
+
+    def __init__(self, source: str, reason: str, tries: int) -> None:
+        self.reason = reason
+        super().__init__(
+            f"{source}: did not answer after {tries} tries ({reason}). Check address, network and "
+            "account; nothing was read."
+        )
+
+
+class PlantQueryError(DataError):
+    """The plant's database refused a query, for example because a table is missing."""
+
+    def __init__(self, source: str, query: str, reason: str) -> None:
+        self.query = query
+        self.reason = reason
+        super().__init__(
+            f"{query} was refused by {source}: {reason}. Correct the query or the account's rights."
+        )
+
+
+class ContractError(DataError):
+    """Rows of a source break the column contract; all faults of the batch are listed.
+
+    Parameters
+    ----------
+    source : str
+        Query or sheet.
+    faults : sequence of str
+        One line a fault: column, what is wrong, the first value, where.
+    """
+
+    def __init__(self, source: str, faults: Sequence[str]) -> None:
+        self.source = source
+        self.faults = tuple(faults)
+        count = len(self.faults)
+        head = f"{source}: {count} fault{'s' if count != 1 else ''}, nothing of it is used."
+        super().__init__("\n".join([head, *(f"  - {fault}" for fault in self.faults)]))
