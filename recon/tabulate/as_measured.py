@@ -146,9 +146,9 @@ class AsMeasured:
         if unknown.quantity == MASS:
             return self._nothing(unknown)
         mass = self._kept(unknown._replace(quantity=MASS))
-        if mass.number is None:
-            return Stated(number=None, reason=mass.reason)
         samples = self._best(self._at.get((unknown, True), ()))
+        if mass.number is None:
+            return Stated(number=None, reason=mass.reason) if samples else self._nothing(unknown)
         if samples:
             return self._from_samples(mass, samples)
         if mass.number.value == 0.0:

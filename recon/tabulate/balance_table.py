@@ -352,13 +352,14 @@ def headline(accounts: dict[tuple[str, str], Account], sheet: Sheet) -> list[Fin
         value = float(a.unaccounted_footed)
         if not u or abs(value) <= LIMIT_K * u:
             continue
+        words = "dry mass" if q == MASS else q
         way = "missing" if value > 0 else "too much"
         found.append(
             Finding(
                 code="unaccounted-large",
                 subject=f"{name} {q}",
                 text=(
-                    f"{'Site' if name == SITE else name}, {q}: {abs(value):.3f} t {way} in "
+                    f"{'Site' if name == SITE else name}, {words}: {abs(value):.3f} t {way} in "
                     f"{sheet.month.name}; chance explains about {LIMIT_K * u:.3f} t "
                     f"(z {value / u:.1f}). Investigate before anything is booked: survey, "
                     "shipments, then the instruments named by the suspects."

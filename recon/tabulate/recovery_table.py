@@ -40,7 +40,10 @@ def write_recoveries(sheet: Sheet) -> None:
     for (f, span), fit in zip(asked, fits, strict=True):
         by = PER_UNIT.get(f.unit, 1.0)
         measured = _ratio(_terms(month, f.of, span), _terms(month, f.over, span))
-        fitted = None if fit.value is None else fit.value * by
+        sums = [_block_sum(month, "fitted", terms, span) for terms in (f.of, f.over)]
+        fitted = None
+        if fit.value is not None and sums[0] is not None and sums[1]:
+            fitted = float(sums[0] / sums[1]) * by
         for column, known in (
             ("measured", measured),
             ("built_up", _built_up(month, f, span)),
@@ -57,7 +60,7 @@ def write_recoveries(sheet: Sheet) -> None:
             u=u,
             unit=f.unit,
             basis="fitted",
-            reason=fit.reason,
+            reason=fit.reason or "part of it cannot be found",
         )
         if fitted is not None and measured.value is not None:
             sheet.number(
@@ -232,7 +235,7 @@ def _year(sheet: Sheet, f: SiteFigure) -> None:
     for block in ("measured", "fitted"):
         sums: list[Decimal | str] = []
         for name, terms in (("of", f.of), ("over", f.over)):
-            own = _block_sum(month, block, terms)
+            own = _block_sum(month, block, terms, month.whole)
             if own is None:
                 sheet.leaf("not determined", f"{TABLE} {f.name}", f"{block}_{name}", 0.0)
                 sums.append("this month states no figure")
@@ -256,14 +259,14 @@ def _year(sheet: Sheet, f: SiteFigure) -> None:
         )
 
 
-def _block_sum(month: Month, block: str, terms: Sequence[Term]) -> Decimal | None:
+def _block_sum(month: Month, block: str, terms: Sequence[Term], span: Span) -> Decimal | None:
     if block == "measured":
-        known = _terms(month, terms, month.whole)
+        known = _terms(month, terms, span)
         return None if known.value is None else Decimal(repr(known.value))
     roles = {s.name: s.role for s in month.streams}
     total = Decimal(0)
     for t in terms:
-        for p in range(1, len(month.days) + 1):
+        for p in range(span.first, span.last + 1):
             fit = month.fitted.amount(p, t.stream, t.quantity)
             if fit.value is None:
                 return None
