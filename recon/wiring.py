@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from recon.solve.choose import FirstAccepted
-from recon.solve.closed_form import ClosedForm
+from recon.solve.choose import FirstAccepted, SmallOnly
 from recon.solve.convex import Convex
+from recon.solve.sparse_direct import SparseDirect
 
 if TYPE_CHECKING:
     from recon.reconcile.solver import Engine
@@ -18,4 +18,4 @@ def engine_named(name: str) -> Engine:
     """Give the engine a person asked for; both are checked before they are believed."""
     if name == "cvxpy":
         return FirstAccepted([Convex()])
-    return FirstAccepted([ClosedForm(), Convex()])
+    return FirstAccepted([SparseDirect(), SmallOnly(), Convex()])

@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from numpy.typing import NDArray
+    from scipy import sparse
 
     from recon.flowsheet.balances import Linear
     from recon.reconcile.problem import Figure
@@ -21,6 +22,7 @@ if TYPE_CHECKING:
     from recon.reconcile.state import State
 
     Vector = NDArray[np.float64]
+    Gradients = Vector | sparse.csr_array
 
 REDUNDANT = 1e-6
 """A datum whose residual keeps no more than this share of its variance checks nothing."""
@@ -107,6 +109,32 @@ def weights(
         draws=draws,
         slope=np.hstack([to_fit / state.fit.u, to_held]),
     )
+
+
+def uncertainties(
+    state: State, solution: Solution, sensitivities: Sensitivities, gradients: Gradients
+) -> Vector:
+    """
+    Give the standard uncertainties of k quantities, without what they rest on.
+
+    Where figures are held, a draw moves a quantity through its prior and through the held figures
+    that it enters, and a held figure's own error counts: ``W V W'`` of the whole estimator.
+
+    Returns
+    -------
+    ndarray
+        Shape (k,).
+    """
+    variance = sensitivities.variances(gradients)
+    if len(state.held.value):
+        g = state.draws
+        shared = sensitivities.shared_rows(gradients)
+        to_prior, to_held = shared[:, :g], shared[:, g:]
+        offsets = state.held.offsets(solution.point.x)
+        variance = variance - np.sum(to_prior**2, axis=1)
+        variance += np.sum((np.asarray(to_held @ offsets) - to_prior) ** 2, axis=1)
+        variance += np.sum((to_held * np.nan_to_num(state.held.u)) ** 2, axis=1)
+    return np.asarray(np.sqrt(np.maximum(variance, 0.0)))
 
 
 def figure_values(

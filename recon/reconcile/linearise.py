@@ -13,10 +13,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 from scipy import sparse
 
+from recon.reconcile.state import Readings
+
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from recon.reconcile.state import Readings, State
+    from recon.reconcile.state import State
 
     Vector = NDArray[np.float64]
 

@@ -6,6 +6,7 @@ from dataclasses import replace
 from typing import TYPE_CHECKING
 
 import numpy as np
+from scipy import sparse
 from scipy.stats import chi2
 
 from recon.findings import NotApplicable, Statistic
@@ -13,9 +14,9 @@ from recon.flowsheet.balances import Amount, Stock, Unknown
 from recon.flowsheet.network import MASS
 from recon.reconcile.accept import BOUND, OPTIMUM, check
 from recon.reconcile.answer import Answer, Estimate, Offset, Reconciled
-from recon.reconcile.figures import REDUNDANT, figure_values, quantity, weights
-from recon.reconcile.linearise import local, standing_parts
-from recon.reconcile.state import Readings, State, carries_mass, state_of
+from recon.reconcile.figures import REDUNDANT, figure_values, uncertainties
+from recon.reconcile.linearise import STANDING, local, standing_parts
+from recon.reconcile.state import Column, Readings, State, carries_mass, state_of
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -28,8 +29,6 @@ if TYPE_CHECKING:
 
 NULL = "The stated uncertainties explain every adjustment; no gross error."
 STREAM_STANDS = "stream stands"
-BLOCK = 512
-"""Rows of sensitivities held in memory at once."""
 
 
 def reconcile(problem: Problem, engine: Engine) -> Answer:
@@ -122,53 +121,61 @@ def _test_problem(state: State, solution: Solution) -> tuple[State, Local]:
 
 def _estimates(state: State, solution: Solution, sensitivities: Sensitivities) -> list[Estimate]:
     bound = _at_bound(state, solution)
-    asked: list[tuple[Unknown, bool]] = []
-    for column in state.columns:
-        if isinstance(column, Amount | Stock):
-            asked.append((column, False))
-            if carries_mass(state, column):
-                asked.append((column, True))
+    top = [i for i, c in enumerate(state.columns) if isinstance(c, Amount | Stock)]
+    below = [-1] * len(top)
+    for i in tuple(top):
+        if carries_mass(state, state.columns[i]):
+            top.append(i)
+            below.append(state.index[_mass_of(state.columns[i])])
+    over, mass = np.array(top, dtype=np.intp), np.array(below, dtype=np.intp)
+    order = np.lexsort((mass >= 0, over))
+    over, mass = over[order], mass[order]
+    value, gradients = _values(solution, over, mass)
+    stands = np.isnan(value)
+    known = sensitivities.determined(gradients) & ~stands
+    u = uncertainties(state, solution, sensitivities, gradients)
     result: list[Estimate] = []
-    for first in range(0, len(asked), BLOCK):
-        result += _block(state, solution, sensitivities, asked[first : first + BLOCK], bound)
-    return result
-
-
-def _block(
-    state: State,
-    solution: Solution,
-    sensitivities: Sensitivities,
-    asked: list[tuple[Unknown, bool]],
-    bound: NDArray[np.bool_],
-) -> list[Estimate]:
-    found = [
-        quantity(
-            state,
-            solution,
-            ((unknown, 1.0),),
-            ((unknown._replace(quantity=MASS), 1.0),) if fraction else None,
-        )
-        for unknown, fraction in asked
-    ]
-    gradients = np.array([q.gradient for q in found])
-    known = sensitivities.determined(gradients)
-    u = weights(state, solution, sensitivities, gradients).u
-    result = []
-    for i, ((unknown, fraction), q) in enumerate(zip(asked, found, strict=True)):
-        determined = bool(known[i]) and q.value is not None
-        reason = "" if determined else (STREAM_STANDS if q.value is None else "cannot be found")
+    for k, (i, j) in enumerate(zip(over, mass, strict=True)):
+        unknown = state.columns[i]
+        assert isinstance(unknown, Amount | Stock)
         result.append(
             Estimate(
                 unknown=unknown,
-                fraction=fraction,
-                value=q.value if determined else None,
-                u=float(u[i]) if determined else None,
-                determined=determined,
-                at_bound=bool(bound[state.index[unknown]]),
-                reason=reason,
+                fraction=bool(j >= 0),
+                value=float(value[k]) if known[k] else None,
+                u=float(u[k]) if known[k] else None,
+                determined=bool(known[k]),
+                at_bound=bool(bound[i]),
+                reason="" if known[k] else STREAM_STANDS if stands[k] else "cannot be found",
             )
         )
     return result
+
+
+def _mass_of(column: Column) -> Unknown:
+    assert isinstance(column, Amount | Stock)
+    return column._replace(quantity=MASS)
+
+
+def _values(
+    solution: Solution, over: NDArray[np.intp], mass: NDArray[np.intp]
+) -> tuple[Vector, sparse.csr_array]:
+    """Values, NaN where a stream stands, and scaled gradients (k, N) of amounts and fractions."""
+    x, scale = solution.point.x, solution.local.scale
+    k = np.arange(len(over))
+    fraction = mass >= 0
+    running = fraction & (x[mass] > STANDING * scale[mass])
+    below = np.where(running, x[mass], 1.0)
+    value = np.where(fraction & ~running, np.nan, x[over] / below)
+    slope = np.where(fraction & ~running, 0.0, scale[over] / below)
+    tilt = (-x[over] / below**2 * scale[mass])[running]
+    return value, sparse.csr_array(
+        (
+            np.concatenate([slope, tilt]),
+            (np.concatenate([k, k[running]]), np.concatenate([over, mass[running]])),
+        ),
+        shape=(len(k), len(scale)),
+    )
 
 
 def _at_bound(state: State, solution: Solution) -> NDArray[np.bool_]:
@@ -233,9 +240,8 @@ def _offsets(
     if g == 0:
         return []
     n, wide = len(state.columns), len(solution.local.scale)
-    gradients = np.zeros((g, wide))
-    gradients[np.arange(g), n + np.arange(g)] = 1.0
-    u = weights(state, solution, sensitivities, gradients).u
+    gradients = sparse.csr_array(sparse.eye_array(g, wide, k=n))
+    u = uncertainties(state, solution, sensitivities, gradients)
     residuals, leverage = tests.residuals[-g:], tests.leverage[-g:]
     return [
         Offset(

@@ -8,11 +8,13 @@ from typing import TYPE_CHECKING, Protocol
 if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
+    from scipy import sparse
 
     from recon.reconcile.linearise import Local, Point
     from recon.reconcile.state import State
 
     Vector = NDArray[np.float64]
+    Gradients = Vector | sparse.csr_array
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -86,13 +88,13 @@ class Sensitivities(Protocol):
         """Standardised residuals of the minimum, shape (m + g,); positive reads high."""
         ...
 
-    def rows(self, gradients: Vector) -> Vector:
+    def rows(self, gradients: Gradients) -> Vector:
         """
         Give the change of quantities per unit change of each datum and each held value.
 
         Parameters
         ----------
-        gradients : ndarray
+        gradients : ndarray or csr_array
             Derivatives of k quantities to scaled unknowns and offsets, shape (k, N).
 
         Returns
@@ -103,7 +105,15 @@ class Sensitivities(Protocol):
         """
         ...
 
-    def determined(self, gradients: Vector) -> NDArray[np.bool_]:
+    def variances(self, gradients: Gradients) -> Vector:
+        """Variances of k quantities from all data, held values taken as exact, shape (k,)."""
+        ...
+
+    def shared_rows(self, gradients: Gradients) -> Vector:
+        """Give the last columns of ``rows``: draws' priors and held values, shape (k, g + h)."""
+        ...
+
+    def determined(self, gradients: Gradients) -> NDArray[np.bool_]:
         """Which of k quantities the data and equalities determine, shape (k,)."""
         ...
 

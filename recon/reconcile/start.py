@@ -28,9 +28,14 @@ if TYPE_CHECKING:
 
 PULL = 1e-3
 """Weight of the pull towards the first guess in the convex start, per typical size."""
-SMALLEST = 1e-3
+SMALLEST = 1e-2
 """Smallest size of an unknown, as a share of the typical size of its quantity."""
-PASSES = 4
+PASSES = 3
+LOWEST = 0.1
+"""A reference mass is not refreshed below this share of the first guess of it: an unmeasured small
+flow would otherwise draw its own weight, and itself, to nothing."""
+AWAY = 0.02
+"""Denominators of assays start at least this share of their first guess away from zero."""
 
 
 def first_guess(state: State) -> tuple[Vector, Vector]:
@@ -58,23 +63,24 @@ def first_guess(state: State) -> tuple[Vector, Vector]:
         if np.isnan(x[i]):
             x[i] = _fill(state, i, x, fractions, sizes[i])
     _fill_compositions(state, x)
-    size = np.maximum(np.abs(x), SMALLEST * sizes)
-    return x, size
+    return x, np.maximum(np.abs(x), SMALLEST * sizes)
 
 
 def _collect(
     readings: Readings, amounts: dict[int, list[float]], fractions: dict[int, list[float]]
 ) -> None:
     """Sort the readings of one single unknown by its column."""
-    for i, measurement in enumerate(readings.measurements):
-        if len(measurement.parts) != 1 or len(measurement.parts[0].of) != 1:
+    per_reading = np.diff(readings.gather.indptr)
+    per_part = np.diff(readings.of.indptr)
+    first = readings.gather.indptr[:-1]
+    for i in np.flatnonzero(per_reading == 1):
+        k = int(readings.gather.indices[first[i]])
+        if per_part[k] != 1:
             continue
-        k = readings.gather[[i], :].indices[0]
-        row = readings.of[[k], :]
-        if not len(row.indices):
-            continue
+        at = readings.of.indptr[k]
         into = fractions if readings.ratio[k] else amounts
-        into.setdefault(int(row.indices[0]), []).append(measurement.value / float(row.data[0]))
+        column = int(readings.of.indices[at])
+        into.setdefault(column, []).append(float(readings.value[i] / readings.of.data[at]))
 
 
 def _typical_sizes(
@@ -137,12 +143,12 @@ def _fill_compositions(state: State, x: Vector) -> None:
     np.add.at(x, common, np.abs(x[amount]))
     whole = np.zeros_like(x)
     np.add.at(whole, share, np.abs(x[amount]))
-    for node in {(c.period, c.node) for c in state.columns if isinstance(c, Share)}:
-        members = [
-            i
-            for i, c in enumerate(state.columns)
-            if isinstance(c, Share) and (c.period, c.node) == node
-        ]
+    nodes: dict[tuple[int, str], list[int]] = {}
+    for i in np.unique(share):
+        column = state.columns[i]
+        assert isinstance(column, Share)
+        nodes.setdefault((column.period, column.node), []).append(int(i))
+    for members in nodes.values():
         total = whole[members].sum()
         x[members] = whole[members] / total if total > 0 else 1 / len(members)
 
@@ -165,7 +171,8 @@ def convex_start(state: State, solve: Callable[[Local], Step]) -> tuple[Point, V
         Typical size of each unknown at it, shape (n,), all positive.
     """
     x, size = first_guess(state)
-    reference = np.abs(state.fit.denominators(x))
+    least = np.where(state.fit.ratio, abs(state.fit.over) @ size, 1.0)
+    reference = np.maximum(np.abs(state.fit.denominators(x)), least)
     beta = np.zeros(state.draws)
     floor = SMALLEST * size
     for _ in range(PASSES if state.fit.ratio.any() or len(state.alike) else 1):
@@ -174,8 +181,17 @@ def convex_start(state: State, solve: Callable[[Local], Step]) -> tuple[Point, V
         x = x + size * move[: len(x)]
         beta = beta + move[len(x) :]
         below = state.fit.denominators(x)
-        reference = np.maximum(np.abs(below), SMALLEST * reference)
+        reference = np.maximum(np.abs(below), LOWEST * least)
+    x = _away_from_zero(state, x, size)
     return Point(x=x, beta=beta), np.maximum(np.abs(x), floor)
+
+
+def _away_from_zero(state: State, x: Vector, size: Vector) -> Vector:
+    """Lift the masses under assays off zero, so that each ratio has a value to start from."""
+    masses = np.unique(state.fit.over.indices)
+    lifted = x.copy()
+    lifted[masses] = np.maximum(x[masses], AWAY * size[masses])
+    return lifted
 
 
 def _convex_local(state: State, point: Point, size: Vector, reference: Vector) -> Local:

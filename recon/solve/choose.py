@@ -6,6 +6,8 @@ from typing import TYPE_CHECKING
 
 from recon.errors import ContradictionError, NotAcceptedError
 from recon.reconcile.accept import check
+from recon.solve.closed_form import ClosedForm
+from recon.solve.sparse_direct import SparseDirect
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -15,6 +17,32 @@ if TYPE_CHECKING:
     from recon.reconcile.state import State
 
 
+DENSE = 400
+"""Up to this many unknowns ranks are read off the singular values of dense factors."""
+
+
+class SmallOnly:
+    """The dense closed form, for problems small enough for it."""
+
+    name = ClosedForm.name
+
+    def solve(self, state: State) -> Solution:
+        """Find the optimum; see ``recon.reconcile.solver.Engine``."""
+        if len(state.columns) + state.draws > DENSE:
+            raise NotAcceptedError([f"{self.name}: too large for dense factors."])
+        return ClosedForm().solve(state)
+
+    def sensitivities(self, local: Local) -> Sensitivities:
+        """Factorise the problem around a point."""
+        return sensitivities(local)
+
+
+def sensitivities(local: Local) -> Sensitivities:
+    """Factorise the problem around a point: densely where it is small, sparsely where large."""
+    engine = ClosedForm() if len(local.scale) <= DENSE else SparseDirect()
+    return engine.sensitivities(local)
+
+
 class FirstAccepted:
     """
     Engine that asks several engines in turn and believes none of them unchecked.
@@ -22,7 +50,7 @@ class FirstAccepted:
     Parameters
     ----------
     engines : sequence of Engine
-        In order of preference; the first one's sensitivities are used.
+        In order of preference.
     """
 
     def __init__(self, engines: Sequence[Engine]) -> None:
@@ -51,5 +79,5 @@ class FirstAccepted:
         raise NotAcceptedError(reasons)
 
     def sensitivities(self, local: Local) -> Sensitivities:
-        """Factorise with the preferred engine."""
-        return self.engines[0].sensitivities(local)
+        """Factorise directly, whichever engine solved it."""
+        return sensitivities(local)

@@ -16,10 +16,12 @@ import numpy as np
 
 from recon.errors import ContradictionError, NotAcceptedError
 from recon.reconcile.solver import Step
+from recon.solve.bounds import settle_bounds
 from recon.solve.iterate import iterate
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
+    from scipy import sparse
 
     from recon.reconcile.linearise import Local
     from recon.reconcile.solver import Solution
@@ -27,6 +29,7 @@ if TYPE_CHECKING:
 
     Vector = NDArray[np.float64]
     Matrix = NDArray[np.float64]
+    Gradients = Vector | sparse.csr_array
 
 RANK = 1e-11
 """A singular value below this share of the largest is zero."""
@@ -34,7 +37,6 @@ OPEN = 1e-8
 """An equality open by more than this, per typical flow, cannot be met."""
 SEEN = 1e-7
 """A figure whose gradient has a larger share than this in the null space is not determined."""
-MOST_WORKING_SETS = 200
 
 
 class ClosedForm:
@@ -63,34 +65,13 @@ def solve_local(local: Local) -> Step:
         The active sets repeat.
     """
     bound = local.bound.toarray()
-    active = np.zeros(len(local.room), dtype=np.bool_)
-    seen: set[bytes] = set()
-    for _ in range(MOST_WORKING_SETS):
-        step = _with_active(local, bound, active)
-        slack = bound @ step.move - local.room
-        wanted = (active & (step.bound_force > -1e-12)) | (~active & (slack < -1e-10))
-        if np.array_equal(wanted, active):
-            return step
-        key = wanted.tobytes()
-        if key in seen:
-            wanted = _one_change(active, wanted, step.bound_force, slack)
-            key = wanted.tobytes()
-            if key in seen:
-                break
-        seen.add(key)
-        active = wanted
-    raise NotAcceptedError(["closed form: the sets of active bounds repeat."])
-
-
-def _one_change(
-    active: NDArray[np.bool_], wanted: NDArray[np.bool_], force: Vector, slack: Vector
-) -> NDArray[np.bool_]:
-    """Change only the bound that is most wrong, so that a cycle is left."""
-    wrong = np.where(active != wanted, np.where(active, -force, -slack), -np.inf)
-    single = active.copy()
-    worst = int(np.argmax(wrong))
-    single[worst] = not single[worst]
-    return single
+    step, _ = settle_bounds(
+        local,
+        lambda active: _with_active(local, bound, active),
+        start=np.zeros(len(local.room), dtype=np.bool_),
+        engine="closed form",
+    )
+    return step
 
 
 def _with_active(local: Local, bound: Matrix, active: NDArray[np.bool_]) -> Step:
@@ -101,14 +82,14 @@ def _with_active(local: Local, bound: Matrix, active: NDArray[np.bool_]) -> Step
     left = gap - equal @ move
     if np.max(np.abs(left), initial=0.0) > OPEN:
         names = [*local.equal_names, *np.array(local.bound_names, dtype=object)[active]]
-        worst = np.argsort(-np.abs(left))[:5]
-        raise ContradictionError(
-            [
-                f"{names[i]} (open by {abs(left[i]):.2g} of its size)"
-                for i in worst
-                if abs(left[i]) > OPEN
-            ]
-        )
+        worst = [
+            f"{names[i]} (open by {abs(left[i]):.2g} of its size)"
+            for i in np.argsort(-np.abs(left))[:5]
+            if abs(left[i]) > OPEN
+        ]
+        if active.any():
+            raise NotAcceptedError([f"closed form: with its bounds, {worst[0]} stays open."])
+        raise ContradictionError(worst)
     pull = parts.data.T @ (local.misfit - parts.data @ move)
     forces = -(parts.inverse.T @ pull)
     bound_force = np.zeros(len(local.room))
@@ -197,7 +178,7 @@ class DenseSensitivities:
         move = self.parts.move(self.local.misfit, self.local.gap)
         return np.asarray(self.local.misfit - self.parts.data @ move)
 
-    def rows(self, gradients: Vector) -> Vector:
+    def rows(self, gradients: Gradients) -> Vector:
         """Sensitivities of k quantities, shape (k, m + g + h)."""
         to_data = gradients @ self.parts.pull
         rows = self.local.held_rows
@@ -205,10 +186,20 @@ class DenseSensitivities:
         to_gap = gradients @ onto - to_data @ (self.parts.data @ onto)
         return np.hstack([to_data, to_gap * self.local.held_pull])
 
-    def determined(self, gradients: Vector) -> NDArray[np.bool_]:
+    def variances(self, gradients: Gradients) -> Vector:
+        """Variances of k quantities from all data, held values taken as exact, shape (k,)."""
+        return np.asarray(np.sum((gradients @ self.parts.pull) ** 2, axis=1))
+
+    def shared_rows(self, gradients: Gradients) -> Vector:
+        """Sensitivities to draws' priors and held values only, shape (k, g + h)."""
+        return self.rows(gradients)[:, len(self.local.standing) :]
+
+    def determined(self, gradients: Gradients) -> NDArray[np.bool_]:
         """Which quantities have no share in the unseen directions, shape (k,)."""
         share = np.linalg.norm(gradients @ self.parts.unseen, axis=1)
-        return np.asarray(share <= SEEN * np.linalg.norm(gradients, axis=1))
+        squares = gradients * gradients if isinstance(gradients, np.ndarray) else gradients.power(2)
+        lengths = np.sqrt(np.asarray(squares.sum(axis=1)).ravel())
+        return np.asarray(share <= SEEN * lengths)
 
     def residual_covariance(self, data: NDArray[np.intp]) -> Vector:
         """Columns of the residuals' covariance, shape (m + g, len(data))."""
