@@ -94,6 +94,35 @@ class Measured:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Recipe:
+    """
+    How a measurement's independent ``u`` was formed: ``hypot(fixed, slope x reference)``.
+
+    Attributes
+    ----------
+    name, period
+        Of the measurement.
+    tag : str
+        Instrument; all its measurements of a month have one reference.
+    fixed : float
+        Part that does not depend on the reference [t or 1].
+    slope, size : float
+        Relative part, and typical size of this reading, per unit of reference [-].
+    provisional : bool
+        Too few running days are known: ``recon.ingest.build.with_references`` replaces it once by
+        the fitted value of a first pass.
+    """
+
+    name: str
+    period: int
+    tag: str
+    fixed: float
+    slope: float
+    size: float
+    provisional: bool
+
+
+@dataclass(frozen=True, kw_only=True)
 class IngestedMonth:
     """
     A month to date, ready to be reconciled.
@@ -109,6 +138,8 @@ class IngestedMonth:
     findings : tuple of Finding
     not_running : tuple of (date, str)
         Streams that stood all day: amounts zero, assays set aside with a finding.
+    recipes : tuple of Recipe
+        One a measurement: how its ``u`` came about.
     """
 
     days: tuple[date, ...]
@@ -116,3 +147,4 @@ class IngestedMonth:
     measured: tuple[Measured, ...]
     findings: tuple[Finding, ...]
     not_running: tuple[tuple[date, str], ...] = ()
+    recipes: tuple[Recipe, ...] = ()

@@ -115,6 +115,16 @@ class TagDay:
     """
     One tag's readings of one plant day, integrated: what the computation needs of them.
 
+    ``tag`` is the instrument's. A **rate** has ``amount`` in its unit x h, over the covered time in
+    which its stream ran. A **totaliser** has it in its unit: the sum of its differences. A
+    **product instrument**, a rate whose chain names other rate tags, has the integral of the
+    product reading by reading at the union of their times, each second value in its canonical
+    unit through its step: ``flow x SO2`` is [flow unit x 1 x h]; a slurry step gives
+    ``flow x (density - 1) x s / (s - 1)``, [flow unit x t/m3 x h]; ``covered`` is where all are.
+    A **run signal** or a tag that belongs to no stream runs all day: its ``mean`` is that of its
+    covered time, a signal's ``amount`` the hours run. The tags a product uses have days of their
+    own as well.
+
     Attributes
     ----------
     tag : str
@@ -122,10 +132,9 @@ class TagDay:
     chunk : str
         Digest of the readings this was made from.
     amount : float or None
-        Integral over covered time [unit of the tag x h], of the product where the instrument's
-        chain multiplies by another rate tag; None below half coverage.
+        As above; None where no time is covered. Whether it is enough is decided later.
     covered_hours, day_hours, running_hours : float
-        Time with a usable value, length of the day (23 to 25 h), time the stream ran [h].
+        Running time with a usable value, length of the day (23 to 25 h), time the stream ran [h].
     mean : float or None
         Time-weighted mean over covered running time [unit].
     readings, bad : int

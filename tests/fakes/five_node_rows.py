@@ -138,7 +138,10 @@ def truth_of(
 def _smelt(charge: dict[str, float], random: np.random.Generator) -> dict[str, dict[str, float]]:
     """Solve matte, slags, fluxes and blister from the Cu, Fe and SiO2 of both vessels."""
     g = {
-        s: {q: v * (1 + 0.01 * float(random.standard_normal())) for q, v in of.items()}
+        s: {
+            q: v * (1 + (0.001 if s == "BLISTER" else 0.01) * float(random.standard_normal()))
+            for q, v in of.items()
+        }
         for s, of in GRADES.items()
         if s != "ANODE"
     }
