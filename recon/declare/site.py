@@ -166,7 +166,8 @@ class Uncertainty:
     Parameters
     ----------
     zero : float
-        Part that does not fall with the reading [instrument's unit, of the amount or fraction].
+        Part that does not fall with the reading: of an amount or stock [t of its quantity, for one
+        day of running]; of a fraction, and of an instrument that only serves others [its unit].
     relative, sampling, preparation, analysis : float
         Relative parts [-].
     """
