@@ -102,6 +102,7 @@ def ingest_month(
         findings=tuple(context.findings),
         not_running=tuple(not_running),
         recipes=stated.recipes,
+        draws=stated.draws,
     )
 
 

@@ -8,7 +8,7 @@ from typing import Literal
 
 from recon.declare.site import Use
 from recon.findings import Finding
-from recon.reconcile.problem import Measurement, Problem
+from recon.reconcile.problem import Draw, Measurement, Problem
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -140,6 +140,8 @@ class IngestedMonth:
         Streams that stood all day: amounts zero, assays set aside with a finding.
     recipes : tuple of Recipe
         One a measurement: how its ``u`` came about.
+    draws : tuple of Draw or None
+        What the effects of ``measured`` index; None where that is ``problem.draws``.
     """
 
     days: tuple[date, ...]
@@ -148,3 +150,9 @@ class IngestedMonth:
     findings: tuple[Finding, ...]
     not_running: tuple[tuple[date, str], ...] = ()
     recipes: tuple[Recipe, ...] = ()
+    draws: tuple[Draw, ...] | None = None
+
+    @property
+    def all_draws(self) -> tuple[Draw, ...]:
+        """What the effects of ``measured`` index, those of compared readings included."""
+        return self.problem.draws if self.draws is None else self.draws

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from collections.abc import Collection, Sequence
+from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Literal
 
@@ -14,11 +14,14 @@ from recon.tabulate.derived import Derived, Readings, combined, exact, readings_
 if TYPE_CHECKING:
     from recon.declare.site import Site
     from recon.ingest.given import OpeningStock
-    from recon.ingest.measured import IngestedMonth, Measured
+    from recon.ingest.measured import Correction, IngestedMonth, Measured
 
 Basis = Literal["read", "settled", "corrected", "estimated", "by difference"]
 WEAKEST: tuple[Basis, ...] = ("settled", "read", "corrected", "estimated", "by difference")
 """From the firmest to the weakest; a sum has the weakest basis among its terms."""
+SET_ASIDE = "set aside"
+MOVES = frozenset({"corrected reading", "override"})
+"""Decisions that change a value; ``held`` only says how firmly it stands."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -92,7 +95,7 @@ class AsMeasured:
         }
         self.readings: Readings = readings_of(
             (m.measurement for m in ingested.measured),
-            ingested.problem.draws,
+            ingested.all_draws,
             (self._opening[key].u or 0.0 for key in self._extra),
         )
         self._standing = set(ingested.not_running)
@@ -140,17 +143,18 @@ class AsMeasured:
             (self.days[unknown.period - 1], unknown.stream) in self._standing
         ):
             return Stated(number=exact(0.0))
-        direct = self._best(self._at.get((unknown, False), ()))
+        direct = self._best(self._at.get((unknown, False), {}))
         if direct:
             return self._from_amount(direct[0])
         if unknown.quantity == MASS:
             return self._nothing(unknown)
         mass = self._kept(unknown._replace(quantity=MASS))
-        samples = self._best(self._at.get((unknown, True), ()))
+        covering = self._at.get((unknown, True), {})
+        samples = self._best(covering)
         if mass.number is None:
             return Stated(number=None, reason=mass.reason) if samples else self._nothing(unknown)
         if samples:
-            return self._from_samples(mass, samples)
+            return self._from_samples(mass, {i: covering[i] for i in samples})
         if mass.number.value == 0.0:
             return replace(mass, number=exact(0.0), wet=None)
         return self._nothing(unknown)
@@ -190,19 +194,20 @@ class AsMeasured:
 
     def _from_amount(self, place: int) -> Stated:
         m = self._measured[place]
-        number = Derived(self._value(m), {place: 1.0})
+        number = Derived(self._value(m) or 0.0, {place: 1.0})
         wet = None
         if m.moisture is not None and m.quantity == MASS and m.moisture < 1.0:
             wet = number * (1.0 / (1.0 - m.moisture))
         return Stated(number=number, basis=self._basis(m), provisional=self._open(m), wet=wet)
 
-    def _from_samples(self, mass: Stated, samples: Sequence[int]) -> Stated:
-        """Measured mass by the mean of the samples that cover it."""
+    def _from_samples(self, mass: Stated, samples: Mapping[int, float]) -> Stated:
+        """Measured mass by the mean of the samples that cover it, by the part each covers."""
         assert mass.number is not None
         taken = [self._measured[i] for i in samples]
+        whole = sum(samples.values())
         grade = combined(
-            (1.0 / len(samples), Derived(self._value(m), {i: 1.0}))
-            for i, m in zip(samples, taken, strict=True)
+            (weight / whole, Derived(self._value(self._measured[i]) or 0.0, {i: 1.0}))
+            for i, weight in samples.items()
         )
         return Stated(
             number=mass.number * grade,
@@ -210,7 +215,7 @@ class AsMeasured:
             provisional=mass.provisional or any(self._open(m) for m in taken),
         )
 
-    def _best(self, places: Sequence[int]) -> list[int]:
+    def _best(self, places: Iterable[int]) -> list[int]:
         """Those readings, all of one instrument, that count."""
         usable = [i for i in places if self._counts(self._measured[i])]
         if not usable:
@@ -229,19 +234,31 @@ class AsMeasured:
         return (m.estimated, use, self._order.get(m.tag, len(self._order)), m.tag)
 
     def _counts(self, m: Measured) -> bool:
-        if not m.set_aside:
-            return True
-        return any(c.kind == "set aside" and c.decision in self._without for c in m.corrections)
+        """Whether a reading stands: not set aside, and not made by a decision left out."""
+        aside = m.set_aside and not any(
+            c.kind == SET_ASIDE and c.decision in self._without for c in m.corrections
+        )
+        return not aside and self._value(m) is not None
 
-    def _value(self, m: Measured) -> float:
-        """Value after those decisions that are in; a decision left out leaves what it met."""
-        if not self._without or not m.corrections:
-            return m.measurement.value
-        value = m.corrections[0].before
+    def _value(self, m: Measured) -> float | None:
+        """
+        Value with those decisions undone that are left out; None where one of them made it.
+
+        Each decision scaled the value by after / before, the sums over what it touched (the day's
+        tickets, the chain's moisture), so leaving it out scales back.
+        """
+        value = m.measurement.value
+        touched: dict[str, list[Correction]] = defaultdict(list)
         for c in m.corrections:
-            if c.decision not in self._without and c.after is not None:
-                value = c.after
-        return m.measurement.value if value is None else value
+            if c.decision in self._without and c.kind != SET_ASIDE:
+                touched[c.decision].append(c)
+        for steps in touched.values():
+            if any(c.before is None for c in steps):
+                return None
+            before = sum(c.before or 0.0 for c in steps)
+            after = sum(c.after or 0.0 for c in steps)
+            value = value * before / after if after else before
+        return value
 
     def _basis(self, m: Measured) -> Basis:
         far = False
@@ -252,7 +269,7 @@ class AsMeasured:
             return "by difference"
         if m.estimated:
             return "estimated"
-        if any(c.kind != "set aside" and c.decision not in self._without for c in m.corrections):
+        if any(c.kind in MOVES and c.decision not in self._without for c in m.corrections):
             return "corrected"
         return "settled" if m.use == "held" or m.stage == "settled" else "read"
 
@@ -260,20 +277,20 @@ class AsMeasured:
         last = self._last_stage.get(m.tag, m.stage)
         return m.estimated or (m.stage not in ("", last))
 
-    def _placed(self) -> dict[tuple[Amount | Stock, bool], list[int]]:
-        """Which readings speak of each unknown, as an amount (False) or as a fraction (True)."""
-        placed: dict[tuple[Amount | Stock, bool], list[int]] = defaultdict(list)
+    def _placed(self) -> dict[tuple[Amount | Stock, bool], dict[int, float]]:
+        """Which readings speak of each unknown, as an amount (False) or a fraction (True)."""
+        placed: dict[tuple[Amount | Stock, bool], dict[int, float]] = defaultdict(dict)
         for i, m in enumerate(self._measured):
             fraction = m.basis == "fraction"
-            covered = dict.fromkeys(
-                unknown._replace(quantity=m.quantity)
+            covered = {
+                unknown._replace(quantity=m.quantity): weight
                 for part in m.measurement.parts
-                for unknown, _ in (part.over if fraction and part.over else part.of)
-            )
+                for unknown, weight in (part.over if fraction and part.over else part.of)
+            }
             if not fraction and len(covered) > 1:
                 continue  # an amount over several days together states no single day
-            for unknown in covered:
-                placed[unknown, fraction].append(i)
+            for unknown, weight in covered.items():
+                placed[unknown, fraction][i] = abs(weight)
         return placed
 
 

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from math import sqrt
 from typing import TYPE_CHECKING
 
+from recon.tabulate.as_measured import MOVES
 from recon.tabulate.derived import Derived, combined
 
 if TYPE_CHECKING:
@@ -47,13 +48,14 @@ def write_measured(sheet: Sheet) -> None:
 
 
 def _lines(month: Month) -> list[Line]:
-    """Group readings: amounts add up; fractions and stocks are averaged, each counting alike."""
+    """Group readings: amounts add up, fractions are averaged, stocks are of the month's cuts."""
     by_day: dict[tuple[str, int], list[int]] = defaultdict(list)
     whole: dict[str, list[int]] = defaultdict(list)
     aside: dict[str, list[int]] = defaultdict(list)
     for i, m in enumerate(month.ingested.measured):
         by_day[_row(m), m.measurement.period].append(i)
-        (aside if m.set_aside else whole)[_row(m)].append(i)
+        if m.boundary != "closing" or m.measurement.period == len(month.days):
+            (aside if m.set_aside else whole)[_row(m)].append(i)
     whole = {tag: whole.get(tag) or aside[tag] for tag in dict.fromkeys((*whole, *aside))}
     lines = [
         Line(tag=tag, span=month.spans[p - 1], places=tuple(places), weight=_weight(month, places))
@@ -87,7 +89,7 @@ def _write(sheet: Sheet, line: Line, readings: Sequence[Measured], fit: Fit) -> 
     u = month.measured.readings.uncertainty(number)
     estimated = any(r.estimated for r in readings)
     settled = all(r.use == "held" for r in readings)
-    corrected = any(c.kind != "set aside" for r in readings for c in r.corrections)
+    corrected = any(c.kind in MOVES for r in readings for c in r.corrections)
     word: BasisOf = "corrected" if corrected else "read"
     sheet.number(
         TABLE,

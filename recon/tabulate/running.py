@@ -101,7 +101,7 @@ def draw_names(month: Month) -> tuple[str, ...]:
     for column in month.year.columns(before, RUNNING, IN_FORCE):
         kept[column.rsplit("@", 1)[0]] = column
     names = []
-    for draw in month.ingested.problem.draws:
+    for draw in month.ingested.all_draws:
         kind = lasts.get(draw.source, "day")
         since = f"{draw.source}@{month.days[draw.first - 1].isoformat()}"
         if kind == "throughout":
@@ -117,7 +117,7 @@ def leave_draws(sheet: Sheet, names: Iterable[str]) -> None:
     """Leave the draws in force at the month's end for the next month."""
     lasts = {s.name: s.lasts for s in sheet.month.sites[-1].sources}
     latest: dict[str, tuple[int, str]] = {}
-    for draw, name in zip(sheet.month.ingested.problem.draws, names, strict=True):
+    for draw, name in zip(sheet.month.ingested.all_draws, names, strict=True):
         if lasts.get(draw.source) == "calibration":
             latest[draw.source] = max(latest.get(draw.source, (0, "")), (draw.first, name))
     for _, name in latest.values():

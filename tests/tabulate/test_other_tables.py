@@ -9,6 +9,10 @@ from uncertainties import ufloat
 
 from recon.declare.site import SiteStream
 from recon.ingest.measured import Correction
+from recon.reconcile.problem import Draw
+from recon.reconcile.read import reconcile
+from recon.solve.closed_form import ClosedForm
+from recon.tabulate.tables import tables_of
 from tests.tabulate.cells import cell, value
 from tests.tabulate.paper import Paper, mill_site, simple_month
 from tests.tabulate.test_tables import mill_month
@@ -152,3 +156,74 @@ def test_a_recovery_with_a_second_feed_has_no_built_up_head() -> None:
         paper.grade([p], "SCATS", 1.0)
     found = cell(paper.tables(), "recoveries", "Cu recovery", "built_up")
     assert found.reason == "SCATS enters beside the head"
+
+
+def test_a_day_covered_by_two_samples_counts_each_by_the_part_it_covers() -> None:
+    paper = simple_month()
+    paper.measured = [m for m in paper.measured if m.tag != "IN Cu"]
+    paper.grade([1], "IN", 25.0)
+    for name, percent, part in (("night", 20.0, 0.25), ("day", 28.0, 0.75)):
+        paper.grade([2], "IN", percent, name=name)
+        last = paper.measured[-1]
+        halves = tuple(
+            replace(
+                p,
+                of=tuple((u, part) for u, _ in p.of),
+                over=tuple((u, part) for u, _ in p.over or ()),
+            )
+            for p in last.measurement.parts
+        )
+        paper.measured[-1] = replace(last, measurement=replace(last.measurement, parts=halves))
+    found = value(paper.tables(), "streams", "IN", "measured_contained_Cu", "2026-01-02")
+    assert found == pytest.approx(1000.0 * 0.26)
+
+
+def test_an_override_where_nothing_was_read_is_missing_in_the_bridge_as_read() -> None:
+    paper = simple_month()
+    paper.measured = [m for m in paper.measured if m.tag != "OUT Cu" or m.measurement.period == 1]
+    made = Correction(
+        decision="d3" * 20, kind="override", before=None, after=240.0, reason="log", by="C. Cee"
+    )
+    paper.amount(2, "OUT", 240.0, corrections=(made,))
+    tables = paper.tables()
+    as_read = cell(tables, "unaccounted-bridge", "Cu 000 as read", "unaccounted")
+    assert as_read.reason == "not determined: OUT 2026-01-02: Cu is not measured"
+    assert value(tables, "unaccounted-bridge", "Cu 999 stated", "unaccounted") == 10.0
+    step = cell(tables, "unaccounted-bridge", "Cu 001 d3d3d3d3d3d3", "effect")
+    assert step.value is None
+
+
+def test_a_moisture_corrected_on_every_ticket_is_undone_once_in_the_bridge() -> None:
+    """Three tickets of 80 t dry: their moisture was read 8 % and corrected to 9 %."""
+    paper = simple_month()
+    paper.measured = [m for m in paper.measured if m.tag != "OUT Cu"]
+    steps = tuple(
+        Correction(
+            decision="d4" * 20, kind="corrected reading", before=80 * 0.92 / 0.91, after=80.0
+        )
+        for _ in range(3)
+    )
+    for p in (1, 2):
+        paper.amount(p, "OUT", 240.0, corrections=steps)
+    as_read = value(paper.tables(), "unaccounted-bridge", "Cu 000 as read", "unaccounted")
+    assert as_read == pytest.approx(1000 + 500 - 480 * 0.92 / 0.91 - 1010)
+
+
+def test_readings_that_are_compared_only_keep_their_own_shared_sources() -> None:
+    """Effects of readings index every draw of the month, not only those of the fit."""
+    paper = simple_month()
+    paper.measured = [m for m in paper.measured if m.tag != "OUT Cu"]
+    paper.draws = (
+        Draw(source="monitor", first=1, u=0.10),
+        Draw(source="laboratory", first=1, u=0.02),
+    )
+    for p in (1, 2):
+        paper.amount(p, "OUT", 240.0, tag="OUT monitor", use="compare", shared={0: 1.0})
+    ingested = paper.ingested()
+    fit = replace(ingested.problem, draws=paper.draws[1:])
+    ingested = replace(ingested, problem=fit, draws=paper.draws)
+    tables = tables_of(
+        sites=(paper.site,) * 2, ingested=ingested, answer=reconcile(fit, ClosedForm())
+    )
+    found = cell(tables, "site-balance", "Cu", "products")
+    assert found.u == pytest.approx((2 + 48.0**2) ** 0.5)
