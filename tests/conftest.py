@@ -6,9 +6,27 @@ import os
 
 from hypothesis import settings
 
-from tests.stores import database_url, postgres, postgres_url
+from tests.stores import (
+    book,
+    book_url,
+    database_url,
+    migrated_file,
+    migrated_template,
+    postgres,
+    postgres_url,
+    sql_book,
+)
 
-__all__ = ["database_url", "postgres", "postgres_url"]
+__all__ = [
+    "book",
+    "book_url",
+    "database_url",
+    "migrated_file",
+    "migrated_template",
+    "postgres",
+    "postgres_url",
+    "sql_book",
+]
 
 os.environ.setdefault("OMP_NUM_THREADS", "1")
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")

@@ -6,9 +6,28 @@ from dataclasses import dataclass
 from datetime import date, datetime
 from typing import Literal
 
-from recon.app.period import Decision, OpeningStock, YearLeaf
+from recon.audit.chain import Entry as AuditEntry
 from recon.findings import Finding
+from recon.ingest.given import Decision, OpeningStock
 from recon.ingest.rows import Record, RowKind, TagDay
+from recon.tabulate.leaves import YearLeaf
+
+__all__ = [
+    "AuditEntry",
+    "Chunk",
+    "Claim",
+    "Kept",
+    "Material",
+    "Progress",
+    "Proposal",
+    "Pulled",
+    "Reread",
+    "RunHead",
+    "RunKind",
+    "Standing",
+    "StoredVersion",
+    "Watermark",
+]
 
 RunKind = Literal["published", "preview", "as-known-at", "window", "prior-period"]
 
@@ -166,7 +185,7 @@ class Material:
     first_month : bool
         No earlier month of this site has a published run: stocks are taken on.
     year : tuple of YearLeaf
-        Leaves of earlier months of the same calendar year, from their current whole-month runs.
+        Leaves of the twelve months before, from their current whole-month runs.
     """
 
     versions: tuple[StoredVersion, ...]
@@ -295,29 +314,3 @@ class Progress:
     total: int
     message: str
     at: datetime
-
-
-@dataclass(frozen=True, kw_only=True)
-class AuditEntry:
-    """
-    One entry of a site's audit chain.
-
-    Attributes
-    ----------
-    seq : int
-        From 1, without gap.
-    body : bytes
-        Canonical bytes, hashed as written.
-    prev_hash, hash : str
-        ``hash`` covers everything else of the entry; see ``recon.audit.chain``.
-    """
-
-    site: str
-    seq: int
-    at: datetime
-    actor: str
-    action: str
-    subject: str
-    body: bytes
-    prev_hash: str
-    hash: str

@@ -14,9 +14,11 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
+import psycopg
 from sqlalchemy import Connection, Engine, create_engine, event, make_url, text
 from sqlalchemy.engine import URL
-from sqlalchemy.exc import DBAPIError, SQLAlchemyError
+from sqlalchemy.exc import DBAPIError, PendingRollbackError
+from sqlalchemy.exc import TimeoutError as PoolTimeout
 
 from recon.errors import BookUnavailableError, DamagedBookError
 
@@ -31,6 +33,15 @@ _REFUSED = {
     sqlite3.SQLITE_DETACH,
 }
 _DAMAGE = ("malformed", "not a database", "corrupt", "invalid page", "checksum", "Could not decode")
+
+_REFUSALS = (
+    sqlite3.IntegrityError,
+    sqlite3.ProgrammingError,
+    psycopg.IntegrityError,
+    psycopg.ProgrammingError,
+    psycopg.DataError,
+)
+"""A constraint, a trigger or a right said no, or the SQL is wrong: not the server's state."""
 
 
 class Database:
@@ -127,23 +138,29 @@ class Database:
     def _in_words(self) -> Iterator[None]:
         try:
             yield
-        except DBAPIError as error:
-            said = str(error.orig).strip().splitlines()[0] if str(error.orig).strip() else "nothing"
-            if any(word in said for word in _DAMAGE):
-                raise DamagedBookError(self.shown, said) from error
-            if _is_refusal(error):
+        except (DBAPIError, sqlite3.Error, psycopg.Error) as error:
+            # bulk inserts speak to the driver itself, so its own errors come here too
+            worded = self._worded((isinstance(error, DBAPIError) and error.orig) or error)
+            if worded is None:
                 raise
-            raise BookUnavailableError(self.shown, said) from error
-        except SQLAlchemyError as error:
-            if "timed out" in str(error) or "timeout" in str(error):
-                raise BookUnavailableError(self.shown, str(error)) from error
-            raise
+            raise worded from error
+        except (PoolTimeout, PendingRollbackError) as error:
+            raise BookUnavailableError(self.shown, str(error).splitlines()[0]) from error
+
+    def _worded(self, error: BaseException) -> BookUnavailableError | DamagedBookError | None:
+        """What an error of the database means; None where a constraint or trigger said no."""
+        said = (str(error).strip() or type(error).__name__).splitlines()[0]
+        if any(word in said for word in _DAMAGE):
+            return DamagedBookError(self.shown, said)
+        refused = isinstance(error, _REFUSALS) and "closed" not in said
+        return None if refused else BookUnavailableError(self.shown, said)
 
 
-def _is_refusal(error: DBAPIError) -> bool:
-    """A constraint or trigger said no, or the SQL is wrong: ours to fix, not the server's state."""
-    name = type(error).__name__
-    return not error.connection_invalidated and name not in ("OperationalError", "InterfaceError")
+def cut(connection: Connection) -> None:
+    """Break a connection in use, as a network would; for failpoints."""
+    driver = connection.connection.driver_connection
+    assert driver is not None
+    driver.close()
 
 
 def _checked(url: str) -> URL:

@@ -14,11 +14,12 @@ import sqlite3
 from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import datetime
+from functools import partial
 from pathlib import Path
 
 from sqlalchemy import Connection, inspect, select
 
-from recon.db.engines import Database
+from recon.db.engines import Database, cut
 from recon.db.protection import find_unprotected
 from recon.db.tables import SCHEMA_MIGRATION
 from recon.errors import AlteredRecordError, OldBookError
@@ -183,7 +184,7 @@ def _apply(database: Database, file: Migration, files: tuple[Migration, ...], at
             return False
         for statement in _statements(database, file.text):
             _run(connection, statement)
-            reach("mid_migration", cut=connection.invalidate)
+            reach("mid_migration", cut=partial(cut, connection))
         connection.execute(
             SCHEMA_MIGRATION.insert().values(
                 number=file.number,
@@ -193,7 +194,7 @@ def _apply(database: Database, file: Migration, files: tuple[Migration, ...], at
                 applied_by=getpass.getuser(),
             )
         )
-        reach("before_commit", cut=connection.invalidate)
+        reach("before_commit", cut=partial(cut, connection))
     return True
 
 

@@ -106,7 +106,8 @@ RUN = _table(
     "run",
     "site run",
     "site run:whole month:day through_day:day kind revision:whole data_digest "
-    "knowledge_cut:time manifest site_versions method summary result_digest published_at:time",
+    "knowledge_cut:time manifest site_versions method summary table_digests result_digest "
+    "published_at:time",
 )
 MEASUREMENT = _table(
     "measurement",

@@ -23,6 +23,11 @@ class UtcTime(TypeDecorator[datetime]):
     impl = DateTime
     cache_ok = True
 
+    @property
+    def python_type(self) -> type[datetime]:
+        """What a value is in Python."""
+        return datetime
+
     def load_dialect_impl(self, dialect: Dialect) -> TypeEngine[Any]:
         """Choose the column type of a dialect."""
         if dialect.name == "sqlite":

@@ -160,6 +160,7 @@ CREATE TABLE run (
     site_versions text NOT NULL,
     method text NOT NULL,
     summary text NOT NULL,
+    table_digests text NOT NULL,
     result_digest text NOT NULL,
     published_at timestamptz NOT NULL,
     PRIMARY KEY (site, run),

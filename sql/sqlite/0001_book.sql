@@ -160,6 +160,7 @@ CREATE TABLE run (
     site_versions TEXT NOT NULL,
     method TEXT NOT NULL,
     summary TEXT NOT NULL,
+    table_digests TEXT NOT NULL,
     result_digest TEXT NOT NULL,
     published_at TEXT NOT NULL,
     PRIMARY KEY (site, run),
