@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
-from typing import NamedTuple
+from typing import Literal, NamedTuple
 
 from recon.flowsheet.network import MASS, Flowsheet
 
@@ -23,6 +23,8 @@ class Stock(NamedTuple):
     boundary: int
     node: str
     quantity: str
+    kind: Literal["stock"] = "stock"
+    """Keeps it apart from an amount of a stream with the node's name: tuples are equal by value."""
 
 
 Unknown = Amount | Stock

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, NamedTuple
+from typing import TYPE_CHECKING, Literal, NamedTuple
 
 import numpy as np
 from scipy import sparse
@@ -39,6 +39,7 @@ class Share(NamedTuple):
     period: int
     node: str
     stream: str
+    kind: Literal["share"] = "share"
 
 
 class Common(NamedTuple):
@@ -47,6 +48,7 @@ class Common(NamedTuple):
     period: int
     node: str
     quantity: str
+    kind: Literal["common"] = "common"
 
 
 Column = Unknown | Share | Common
