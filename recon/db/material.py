@@ -70,7 +70,7 @@ def arrivals(
         asked = select(known, seen).where(
             table.c.site == site, where, (seen > after) | (known > after)
         )
-        found += [max(row) for row in connection.execute(asked).tuples()]
+        found += [max(row[0], row[1]) for row in connection.execute(asked)]
     return (min(found), max(found)) if found else None
 
 
