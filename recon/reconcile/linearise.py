@@ -22,7 +22,7 @@ if TYPE_CHECKING:
 
     Vector = NDArray[np.float64]
 
-STANDING = 1e-9
+STANDING = 1e-7
 """A denominator below this share of its typical size stands: the ratio has no value."""
 
 

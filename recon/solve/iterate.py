@@ -54,7 +54,8 @@ def iterate(state: State, solve: Callable[[Local], Step], *, engine: str) -> Sol
     for passes in range(1, MOST_PASSES + 1):
         around = local(state, point, size)
         step = solve(around)
-        if _at_rest(around, step):
+        whole = _longest(state, point.x, size * step.move[: len(point.x)]) == 1.0
+        if whole and _at_rest(around, step):
             return Solution(
                 point=point,
                 local=around,
