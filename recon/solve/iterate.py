@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from recon.errors import NotAcceptedError
-from recon.reconcile.linearise import Point, local
+from recon.reconcile.linearise import Point, local, standing_parts
 from recon.reconcile.solver import Solution
 from recon.reconcile.start import convex_start
 
@@ -54,7 +54,7 @@ def iterate(state: State, solve: Callable[[Local], Step], *, engine: str) -> Sol
     for passes in range(1, MOST_PASSES + 1):
         around = local(state, point, size)
         step = solve(around)
-        whole = _longest(state, point.x, size * step.move[: len(point.x)]) == 1.0
+        whole = _longest(state, point.x, size, size * step.move[: len(point.x)]) == 1.0
         if whole and _at_rest(around, step):
             return Solution(
                 point=point,
@@ -86,7 +86,7 @@ def _advance(
     price = 1.0 + 2.0 * float(np.max(np.abs(step.equal_force), initial=0.0))
     before = _merit(around, price)
     promised = _promised(around, step, price)
-    length = _longest(state, point.x, move_x)
+    length = _longest(state, point.x, size, move_x)
     for _ in range(40):
         trial = Point(x=point.x + length * move_x, beta=point.beta + length * step.move[n:])
         after = _merit(local(state, trial, size), price)
@@ -107,11 +107,12 @@ def _promised(around: Local, step: Step, price: float) -> float:
     return max(gain + price * float(np.sum(np.abs(around.gap))), 0.0)
 
 
-def _longest(state: State, x: Vector, move: Vector) -> float:
+def _longest(state: State, x: Vector, size: Vector, move: Vector) -> float:
     """The largest step, at most 1, that keeps every running denominator positive."""
+    running = state.fit.ratio & ~standing_parts(state.fit, x, size)
     now = state.fit.over @ x
     change = state.fit.over @ move
-    falling = state.fit.ratio & (now > 0) & (change < -(1 - KEEP) * now)
+    falling = running & (change < -(1 - KEEP) * now)
     if not falling.any():
         return 1.0
     return float(np.min((1 - KEEP) * now[falling] / -change[falling]))
