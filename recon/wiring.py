@@ -9,6 +9,10 @@ from recon.solve.convex import Convex
 from recon.solve.sparse_direct import SparseDirect
 
 if TYPE_CHECKING:
+    from pathlib import Path
+
+    from recon.declare.site import Site
+    from recon.plant.joined import JoinedPlant
     from recon.reconcile.solver import Engine
 
 ENGINES = ("direct", "cvxpy")
@@ -19,3 +23,29 @@ def engine_named(name: str) -> Engine:
     if name == "cvxpy":
         return FirstAccepted([Convex()])
     return FirstAccepted([SparseDirect(), SmallOnly(), Convex()])
+
+
+def plant_of(site: Site, folder: Path, url: str | None) -> JoinedPlant:
+    """
+    Join the plant's sources that a site declares; nothing is asked yet.
+
+    Parameters
+    ----------
+    site : Site
+    folder : Path
+        Of the site file. SQL is looked for in its folder ``sql``, in itself, then among the
+        project's examples; sheets lie in it.
+    url : str or None
+        Address of the plant's database.
+
+    Raises
+    ------
+    ConfigError
+        The address or an SQL file is wrong.
+    """
+    from recon.db.migrate import sql_folder
+    from recon.plant.joined import open_plant
+
+    examples = sql_folder()
+    places = (folder / "sql", folder, examples, examples / "queries")
+    return open_plant(site, url=url, folder=folder, queries=places)

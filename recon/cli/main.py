@@ -7,6 +7,7 @@ import sys
 import typer
 
 from recon import __version__
+from recon.cli.check import check
 from recon.cli.solve import solve
 from recon.errors import ReconError
 
@@ -17,6 +18,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     add_completion=False,
 )
+app.command("check")(check)
 app.command("solve")(solve)
 
 
