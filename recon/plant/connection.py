@@ -71,10 +71,12 @@ class Connection:
         here, what came before it would be given twice; wrap the whole in ``again``.
         """
         used = {k: v for k, v in parameters.items() if k in query.parameters}
-        with self.engine.connect() as session:
-            result = session.execution_options(stream_results=True, max_row_buffer=BATCH).execute(
-                query.clause, used
-            )
+        with (
+            self.engine.connect().execution_options(
+                stream_results=True, yield_per=BATCH
+            ) as session,
+            session.execute(query.clause, used) as result,
+        ):
             names = tuple(result.keys())
             # SQLite's own rows, where SQLAlchemy holds none back, come in half the time.
             fetch: Any = result.fetchmany
@@ -82,8 +84,10 @@ class Connection:
                 fetch = result.cursor.fetchmany
             rows = fetch(BATCH)
             yield names, rows
-            while rows := fetch(BATCH) if rows else ():
-                yield names, rows
+            while len(rows) == BATCH:
+                rows = fetch(BATCH)
+                if rows:
+                    yield names, rows
 
     def again(self, work: Callable[[], Result], query: Query) -> Result:
         """
