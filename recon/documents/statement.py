@@ -295,7 +295,9 @@ def _streams(cells: Cells, heading: Heading) -> list[str]:
     heads = ("wet t", "moist %", "dry t", f"{metal} {unit}", f"{metal} t")
     lines = [["", *(f"read {h}" for h in heads), *(f"fitted {h}" for h in heads[2:])]]
     for row in cells.rows(table, period):
-        lines.append([row, *(shown(cells.at(table, period, row, n)) for n in names)])
+        numbers = [shown(cells.at(table, period, row, n)) for n in names]
+        if any(numbers):
+            lines.append([row, *numbers])
     title = f"Streams {period}: as measured, and fitted ({metal}; all components in the workbook)"
     return [*_section(title), *table_of(lines)]
 

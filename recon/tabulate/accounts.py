@@ -219,7 +219,7 @@ def _why_not(
         return f"dry mass is not conserved at {first_few(unbalanced)}"
     reasons = [s.reason for s in sums if s.number is None]
     reasons += [
-        s.reason or "a stock was rolled further than its limit"
+        s.reason or "a stock is by difference"
         for s in stocks
         if s.number is not None and s.basis == "by difference"
     ]

@@ -123,15 +123,13 @@ class AsMeasured:
         stated = self._kept(Stock(boundary, node, quantity))
         return replace(stated, take_on=True) if boundary == 0 else stated
 
-    def surveyed(self, boundary: int, node: str, quantity: str) -> bool:
-        """Whether a stock was surveyed or estimated there, and not merely rolled too far."""
-        stated = self.stock(boundary, node, quantity)
-        return stated.number is not None and stated.basis != "by difference"
-
-    def used(self, period: int, stream: str, quantity: str) -> tuple[Measured, ...]:
-        """Name the readings that state a stream's amount of a day."""
-        number = self.amount(period, stream, quantity).number
-        return () if number is None else tuple(self._measured[i] for i in sorted(number.slopes))
+    def reading_named(self, place: int) -> tuple[str, int]:
+        """Name a reading, and its period; a signed opening has period 0."""
+        if place < len(self._measured):
+            m = self._measured[place].measurement
+            return m.name, m.period
+        node, quantity = list(self._extra)[place - len(self._measured)]
+        return f"signed opening {node} {quantity}", 0
 
     def _kept(self, unknown: Amount | Stock) -> Stated:
         if unknown not in self._known:
@@ -195,10 +193,16 @@ class AsMeasured:
     def _from_amount(self, place: int) -> Stated:
         m = self._measured[place]
         number = Derived(self._value(m) or 0.0, {place: 1.0})
-        wet = None
+        wet, basis = None, self._basis(m)
+        reason = ""
+        if basis == "by difference":
+            reason = (
+                f"{m.node}: {m.quantity} was surveyed {abs(m.rolled_hours):.0f} h from the cut, "
+                "further than its survey may be rolled"
+            )
         if m.moisture is not None and m.quantity == MASS and m.moisture < 1.0:
             wet = number * (1.0 / (1.0 - m.moisture))
-        return Stated(number=number, basis=self._basis(m), provisional=self._open(m), wet=wet)
+        return Stated(number=number, basis=basis, reason=reason, provisional=self._open(m), wet=wet)
 
     def _from_samples(self, mass: Stated, samples: Mapping[int, float]) -> Stated:
         """Measured mass by the mean of the samples that cover it, by the part each covers."""

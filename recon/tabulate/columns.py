@@ -342,6 +342,24 @@ TABLES: tuple[Table, ...] = (
         ),
     ),
     Table(
+        name="tests",
+        title="Tests of the data",
+        row="what is tested",
+        columns=(
+            _c(
+                "p_value",
+                "p-value",
+                "Chance of residuals this large together, if every stated uncertainty holds.",
+                "-",
+                4,
+            ),
+            _c("degrees_of_freedom", "Degrees of freedom", "Of that test.", "-", 0),
+            _c("largest", "Largest single test", "Largest |T| of the period.", "-", 2),
+            _c("limit", "Its limit", "At the site's false-alarm rate.", "-", 2),
+            _c("alarm", "Alarm", "raised or not, or why there is no test.", "", 0),
+        ),
+    ),
+    Table(
         name="residues",
         title="Rounding residues",
         row="table and row",

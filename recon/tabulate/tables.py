@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING
 from recon.tabulate.as_measured import AsMeasured
 from recon.tabulate.balance_table import headline, write_balances
 from recon.tabulate.bridge import write_bridge
+from recon.tabulate.budgets import unaccounted_figures
 from recon.tabulate.closure_table import write_closure
 from recon.tabulate.fitted import Fitted
 from recon.tabulate.leaves import Booked, Year, YearLeaf
@@ -32,7 +33,7 @@ if TYPE_CHECKING:
     from recon.findings import Finding
     from recon.ingest.given import OpeningStock
     from recon.ingest.measured import IngestedMonth
-    from recon.reconcile.answer import Answer
+    from recon.reconcile.answer import Answer, FigureValue
     from recon.tabulate.cells import Cell
 
 
@@ -45,6 +46,8 @@ class Tables:
     ----------
     cells : tuple of Cell
         Every table of ``recon.tabulate.columns``, for days, the month and the year to date.
+    figures : tuple of FigureValue
+        The month's unaccounted metal of site and sections, with budgets.
     closing : tuple of OpeningStock
         Closing stocks as printed: next month's opening.
     leaves : tuple of YearLeaf
@@ -53,6 +56,7 @@ class Tables:
     """
 
     cells: tuple[Cell, ...]
+    figures: tuple[FigureValue, ...]
     closing: tuple[OpeningStock, ...]
     leaves: tuple[YearLeaf, ...]
     findings: tuple[Finding, ...]
@@ -115,6 +119,7 @@ def tables_of(
     sheet.findings += headline(accounts, sheet)
     return Tables(
         cells=tuple(sheet.cells),
+        figures=unaccounted_figures(month, accounts.values()),
         closing=closing,
         leaves=tuple(sheet.leaves),
         findings=tuple(sheet.findings),

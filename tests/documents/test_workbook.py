@@ -204,3 +204,20 @@ def test_the_dictionary_of_columns_is_in_the_file(content: bytes) -> None:
     book = load_workbook(io.BytesIO(content))
     listed = {(r[0].value, r[1].value) for r in book["columns"].iter_rows(min_row=2)}
     assert listed == {(t.name, c.name) for t in TABLES for c in t.columns}
+
+
+def test_what_changed_since_an_earlier_revision_stands_on_a_sheet(tables: Tables) -> None:
+    paper = mill_month()
+    last = paper.measured[-1]
+    paper.measured[-1] = replace(last, measurement=replace(last.measurement, value=0.0010))
+    now = paper.tables()
+    content = workbook(HEADING, mill_site(), now.cells, before=tables.cells)
+    book = Recalculated(content)
+    rows = [[c.value for c in r] for r in book.cached["changes"].iter_rows(min_row=2)]
+    (line,) = [r for r in rows if r[:4] == ["streams", "2026-01", "TAIL", "measured_contained_Cu"]]
+    assert line[4:6] == [1.694, 2.118]
+    assert line[6] == pytest.approx(0.424)
+    assert not [r for r in rows if r[2] == "ORE" and r[3].startswith("measured")]
+    for sheet, address, _ in book.formulas():
+        cached = book.cached[sheet][address].value
+        assert book.value(sheet, address) == pytest.approx(cached, rel=1e-9, abs=1e-9)

@@ -3,15 +3,20 @@
 from __future__ import annotations
 
 from collections import Counter
+from dataclasses import replace
 from datetime import date
 
 import pytest
 
+from recon.declare.site import SiteStream
+from recon.reconcile.read import reconcile
+from recon.solve.closed_form import ClosedForm
 from recon.tabulate.cells import Cell
 from recon.tabulate.columns import TABLE
-from recon.tabulate.tables import Tables
+from recon.tabulate.tables import Tables, tables_of
 from tests.tabulate.cells import cell, value
-from tests.tabulate.paper import Paper, mill_site, simple_month
+from tests.tabulate.paper import Paper, flowsheet, mill_site, simple_month
+from tests.tabulate.test_unaccounted import shared_density
 
 WORDS = {"", "read", "corrected", "settled", "estimated", "fitted", "by difference", "computed"}
 
@@ -162,3 +167,38 @@ def test_year_to_date_adds_signed_leaves_of_earlier_months() -> None:
     assert value(february, "site-balance", "Cu", "unaccounted", "2026") == 15.0
     assert value(february, "streams", "IN", "measured_contained_Cu", "2026") == 1000.0
     assert value(february, "site-balance", "Cu", "previous_month", "2026-02") == 10.0
+
+
+def test_each_leaf_of_the_year_is_stated_once() -> None:
+    for tables in (simple_month().tables(), mill_month().tables()):
+        places = Counter((x.month, x.table, x.row, x.column) for x in tables.leaves)
+        assert [place for place, count in places.items() if count > 1] == []
+
+
+def test_a_stream_that_begins_within_the_month_counts_from_its_first_day() -> None:
+    paper = simple_month()
+    paper.amount(2, "TOLL", 30.0)
+    paper.amount(2, "TOLL", 120.0, quantity="mass")
+    toll = SiteStream(name="TOLL", target="SHED", carries=("mass", "Cu"), role="receipt")
+    later = replace(paper.site, streams=(*paper.site.streams, toll))
+    ingested = paper.ingested()
+    problem = replace(ingested.problem, flowsheets=(flowsheet(paper.site), flowsheet(later)))
+    ingested = replace(ingested, problem=problem)
+    tables = tables_of(
+        sites=(paper.site, later), ingested=ingested, answer=reconcile(problem, ClosedForm())
+    )
+    assert value(tables, "site-balance", "Cu", "receipts", "2026-01-01") == 250.0
+    assert value(tables, "site-balance", "Cu", "receipts", "2026-01-02") == 280.0
+    assert value(tables, "site-balance", "Cu", "unaccounted") == 40.0
+    assert value(tables, "streams", "TOLL", "measured_contained_Cu") == 30.0
+
+
+def test_each_unaccounted_figure_has_a_budget_that_sums_to_one() -> None:
+    paper = shared_density()
+    figures = {f.name: f for f in paper.tables().figures}
+    found = figures["unaccounted Cu"]
+    assert found.u == pytest.approx(72**0.5)
+    assert sum(s.share for s in found.budget) == pytest.approx(1.0)
+    first = found.budget[0]
+    assert (first.name, first.source, first.share) == ("survey density", True, pytest.approx(0.5))
+    assert figures["unaccounted mass"].reason.startswith("not determined")
