@@ -34,7 +34,7 @@ class Stated:
     number : Derived or None
     basis : str
     reason : str
-        Why there is no number; empty where there is one.
+        Why there is no number, or why it is by difference.
     provisional : bool
         Rests on a value that is estimated or not yet of its last stage.
     wet : Derived or None
@@ -193,16 +193,16 @@ class AsMeasured:
     def _from_amount(self, place: int) -> Stated:
         m = self._measured[place]
         number = Derived(self._value(m) or 0.0, {place: 1.0})
-        wet, basis = None, self._basis(m)
-        reason = ""
-        if basis == "by difference":
-            reason = (
-                f"{m.node}: {m.quantity} was surveyed {abs(m.rolled_hours):.0f} h from the cut, "
-                "further than its survey may be rolled"
-            )
+        wet = None
         if m.moisture is not None and m.quantity == MASS and m.moisture < 1.0:
             wet = number * (1.0 / (1.0 - m.moisture))
-        return Stated(number=number, basis=basis, reason=reason, provisional=self._open(m), wet=wet)
+        return Stated(
+            number=number,
+            basis=self._basis(m),
+            reason=self._too_far(m),
+            provisional=self._open(m),
+            wet=wet,
+        )
 
     def _from_samples(self, mass: Stated, samples: Mapping[int, float]) -> Stated:
         """Measured mass by the mean of the samples that cover it, by the part each covers."""
@@ -216,6 +216,7 @@ class AsMeasured:
         return Stated(
             number=mass.number * grade,
             basis=weakest([mass.basis, *(self._basis(m) for m in taken)]),
+            reason=next((r for r in (mass.reason, *(self._too_far(m) for m in taken)) if r), ""),
             provisional=mass.provisional or any(self._open(m) for m in taken),
         )
 
@@ -265,17 +266,23 @@ class AsMeasured:
         return value
 
     def _basis(self, m: Measured) -> Basis:
-        far = False
-        if m.node is not None:
-            node = next((n for n in self.sites[-1].nodes if n.name == m.node), None)
-            far = node is not None and abs(m.rolled_hours) > 24.0 * node.roll_limit_days
-        if far:
+        if self._too_far(m):
             return "by difference"
         if m.estimated:
             return "estimated"
         if any(c.kind in MOVES and c.decision not in self._without for c in m.corrections):
             return "corrected"
         return "settled" if m.use == "held" or m.stage == "settled" else "read"
+
+    def _too_far(self, m: Measured) -> str:
+        """Say that a survey was rolled further than its place allows, where it was."""
+        node = next((n for n in self.sites[-1].nodes if n.name == m.node), None)
+        if node is None or abs(m.rolled_hours) <= 24.0 * node.roll_limit_days:
+            return ""
+        return (
+            f"{m.node} was surveyed {abs(m.rolled_hours):.0f} h from the cut, further than a "
+            f"survey may be rolled there ({24.0 * node.roll_limit_days:.0f} h)"
+        )
 
     def _open(self, m: Measured) -> bool:
         last = self._last_stage.get(m.tag, m.stage)
