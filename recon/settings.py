@@ -45,6 +45,8 @@ class Settings:
         A claim that is not renewed for so long may be taken over [s].
     stop_seconds : int
         At most so long a running computation is waited for on a stop [s].
+    pull_seconds : int
+        The sources are read at most so often [s].
     cap : int
         At most so many runs a tick.
     look_back_days : int
@@ -59,6 +61,7 @@ class Settings:
     tick_seconds: int = 30
     lease_seconds: int = 60
     stop_seconds: int = 30
+    pull_seconds: int = 300
     cap: int = 10
     look_back_days: int = 35
 
@@ -68,6 +71,7 @@ LOWEST = {
     "tick_seconds": 1,
     "lease_seconds": 2,
     "stop_seconds": 0,
+    "pull_seconds": 0,
     "cap": 1,
     "look_back_days": 0,
 }

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from recon.solve.choose import FirstAccepted, SmallOnly
+from recon.solve.choose import FirstAccepted
 from recon.solve.convex import Convex
-from recon.solve.sparse_direct import SparseDirect
+from recon.solve.standard import standard_engine
 
 if TYPE_CHECKING:
     from pathlib import Path
@@ -22,7 +22,7 @@ def engine_named(name: str) -> Engine:
     """Give the engine a person asked for; both are checked before they are believed."""
     if name == "cvxpy":
         return FirstAccepted([Convex()])
-    return FirstAccepted([SparseDirect(), SmallOnly(), Convex()])
+    return standard_engine()
 
 
 def plant_of(site: Site, folder: Path, url: str | None) -> JoinedPlant:

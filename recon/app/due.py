@@ -64,7 +64,7 @@ class Due:
     month: date
     through: date
     since: datetime
-    reason: Literal["settled", "new data"]
+    reason: Literal["settled", "new data", "asked"]
 
 
 def due_runs(

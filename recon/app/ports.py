@@ -61,6 +61,10 @@ class Plant(Protocol):
         """
         ...
 
+    def noted(self) -> tuple[Finding, ...]:
+        """Give what was found in passing since this was last asked: revisions, missing values."""
+        ...
+
 
 class Book(Protocol):
     """

@@ -126,7 +126,7 @@ def _measurement_row(
     measurement = m.measurement
     if moved is None:
         reconciled = model_value(measurement, answer)
-        u = _stated(measurement, month.problem.draws)
+        u = _stated(measurement, month.all_draws)
     else:
         reconciled, u = moved.reconciled, moved.u
     return MeasurementRow(
@@ -165,7 +165,7 @@ def _stated(measurement: Measurement, draws: tuple[Draw, ...]) -> float | None:
 
 def _sources(m: Measured, month: IngestedMonth) -> str:
     """What a measurement was made from and which shared errors enter it, as canonical JSON."""
-    draws = month.problem.draws
+    draws = month.all_draws
     return canonical(
         {
             "tag": m.tag,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import defaultdict
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -12,8 +13,13 @@ from recon.findings import Finding, Severity
 from recon.reconcile.figures import REDUNDANT
 from recon.suspects.alarm import Alarm, raise_alarm, standardised
 from recon.suspects.naming import Suspect, name_suspects
+from recon.suspects.words import sentence_on
 
 if TYPE_CHECKING:
+    from collections.abc import Collection, Mapping
+
+    from recon.declare.site import Site
+    from recon.ingest.measured import IngestedMonth
     from recon.reconcile.answer import Answer
     from recon.reconcile.solver import Sensitivities
 
@@ -71,46 +77,64 @@ def bounded_alarm(tests: Sensitivities, level: float) -> Alarm:
 
 
 def suspect_findings(
-    suspects: tuple[Suspect, ...], *, period: int | None, when: str
+    suspects: tuple[Suspect, ...],
+    *,
+    period: int | None,
+    when: str,
+    services: Mapping[str, Collection[str]],
 ) -> list[Finding]:
-    """Say in words who is named, by how much it would be off, and what else explains it."""
-    return [_finding(suspect, period, when) for suspect in suspects]
+    """
+    Say in words who is named, by how much it would be off, and what else explains it.
 
-
-def _finding(suspect: Suspect, period: int | None, when: str) -> Finding:
-    if not suspect.names:
-        return Finding(
-            code="unexplained",
-            subject="site",
-            severity=Severity.WARNING,
+    Parameters
+    ----------
+    suspects : tuple of Suspect
+    period : int or None
+        Day of a day's own test; one alarm in so many such tests is chance, so it is a warning.
+    when : str
+        Month or day, for the sentence.
+    services : mapping
+        Other duties of what stands behind each name; see ``services_by_name``.
+    """
+    return [
+        Finding(
+            code="suspect" if suspect.names else "unexplained",
+            subject=suspect.names[0] if suspect.names else "site",
+            severity=Severity.SERIOUS if period is None else Severity.WARNING,
             period=period,
-            text=(
-                f"{when}: the readings disagree more than their uncertainties allow, and no single "
-                "instrument explains it. Look for several small faults, a wrong uncertainty, or a "
-                "stream that is not drawn."
+            text=f"{when}: {sentence_on(suspect, _duties(suspect, services))}",
+            evidence=(
+                ("names", ", ".join(suspect.names)),
+                ("size", "" if suspect.size is None else repr(suspect.size)),
+                ("u", "" if suspect.u is None else repr(suspect.u)),
+                ("unit", suspect.unit),
+                ("probability", "" if suspect.probability is None else repr(suspect.probability)),
             ),
         )
-    first, *others = suspect.names
-    size = (
-        ""
-        if suspect.size is None or suspect.u is None
-        else f" by {suspect.size:+.4g} +/- {2 * suspect.u:.2g} {suspect.unit} (95 %)".rstrip()
-    )
-    also = f" Not to be told apart from it: {', '.join(others)}." if others else ""
-    return Finding(
-        code="suspect",
-        subject=first,
-        severity=Severity.SERIOUS,
-        period=period,
-        text=(
-            f"{when}: {suspect.kind} {first} would explain the disagreement, being off{size}."
-            f"{also} Check it first; nothing was set aside."
-        ),
-        evidence=(
-            ("names", ", ".join(suspect.names)),
-            ("size", "" if suspect.size is None else repr(suspect.size)),
-            ("u", "" if suspect.u is None else repr(suspect.u)),
-            ("unit", suspect.unit),
-            ("probability", "" if suspect.probability is None else repr(suspect.probability)),
-        ),
-    )
+        for suspect in suspects
+    ]
+
+
+def services_by_name(site: Site, month: IngestedMonth) -> dict[str, frozenset[str]]:
+    """
+    Give the other duties behind every name a suspect may carry.
+
+    A sampler, a shared source and a place carry the duties of every instrument they touch, so that
+    nobody is sent to a guarded instrument by way of a neighbour's name.
+    """
+    found: dict[str, set[str]] = defaultdict(set)
+    ends = {s.name: (s.source, s.target) for s in site.streams}
+    for i in site.instruments:
+        touched = [i.tag, i.sampler, i.node, i.stream, *(s.source for s in i.shared)]
+        touched += ends.get(i.stream or "", ())
+        for name in touched:
+            if name is not None:
+                found[name].update(i.service)
+    for m in month.measured:
+        found[m.measurement.name] |= found[m.tag]
+    return {name: frozenset(duties) for name, duties in found.items()}
+
+
+def _duties(suspect: Suspect, services: Mapping[str, Collection[str]]) -> set[str]:
+    names = {*suspect.names, *(a.name for a in suspect.alternatives)}
+    return {duty for name in names for duty in services.get(name, ())}

@@ -79,6 +79,11 @@ class Status:
             self._due = count
         self.due_now.set(count)
 
+    def reading(self, what: str, done: int, total: int) -> None:
+        """A source is being read."""
+        with self._lock:
+            self._working_on = f"reading {what} ({done + 1} of {total})"
+
     def period_began(self, period: str) -> None:
         """A period is being computed."""
         with self._lock:

@@ -7,10 +7,11 @@ import pytest
 from numpy.typing import NDArray
 from scipy.stats import kstest
 
-from recon.app.day_tests import day_statistics, one_day
+from recon.app.day_tests import day_statistics
 from recon.findings import Statistic
 from recon.flowsheet.balances import Amount, Stock
 from recon.flowsheet.network import MASS, Flowsheet, Node, Stream
+from recon.ingest.statement import one_day
 from recon.reconcile.problem import Draw, Effect, Measurement, MeasurementKind, Part, Problem
 from recon.reconcile.read import reconcile
 from recon.solve.closed_form import ClosedForm
@@ -98,7 +99,9 @@ def test_a_sample_over_two_days_belongs_to_neither() -> None:
 
 def test_a_fault_alarms_its_own_day_and_no_other() -> None:
     month = bin_over_days(3, bias={2: 20.0})
-    tests = [day_statistics(month, p, engine=ClosedForm(), level=0.05) for p in (1, 2, 3)]
+    tests = [
+        day_statistics(one_day(month, p), p, engine=ClosedForm(), level=0.05) for p in (1, 2, 3)
+    ]
     raised = [t.alarm.raised for t in tests if t.alarm is not None]
     assert raised == [False, True, False]
     assert IN in tests[1].suspects[0].names
