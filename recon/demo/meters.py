@@ -19,8 +19,8 @@ from recon.units import unit
 
 SERVING_SHARE = 0.3
 """Part of the variance of an amount that comes from the reading that serves its chain."""
-LOT_SHARE = 0.1
-"""The same for the moisture of a lot, which several days share."""
+MOISTURE_SHARE = 0.05
+"""The same for a moisture, which is surer than the mass it dries; a lot's is shared by its days."""
 FAST = 0.004
 """Standard deviation of a transmitter's flicker, relative to its reading; nothing over a day."""
 SERVING_FAST = 0.0008
@@ -98,8 +98,7 @@ def draw_errors(truth: Truth, sizes: Sizes, serving: Mapping[str, Floats], span:
         for step in instrument.chain:
             if step.tag is None:
                 continue
-            lot = instrument.kind == "tickets" and serves[step.tag].kind == "assay"
-            share = LOT_SHARE if lot else SERVING_SHARE
+            share = MOISTURE_SHARE if step.by == "moisture" else SERVING_SHARE
             taken = share * (relative * amount) ** 2
             usual = float(serving[step.tag][truth.grid.first[:-1]].mean())
             drawn = chance(span.seed, "serving error", step.tag).standard_normal(len(amount))

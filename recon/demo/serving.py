@@ -30,7 +30,6 @@ USUAL: dict[str, tuple[float, float, float]] = {
     "ore belt moisture": (3.1, 0.06, 100.0),
     "mill feed moisture": (2.9, 0.05, 100.0),
     "cake moisture": (9.2, 0.03, 60.0),
-    "charge moisture": (0.3, 0.10, 60.0),
     "flux moisture": (2.6, 0.06, 100.0),
     "slag concentrate moisture": (9.0, 0.04, 60.0),
     "custom A moisture": (8.1, 0.05, 60.0),

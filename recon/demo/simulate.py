@@ -9,6 +9,7 @@ from datetime import date
 from recon.declare.site import Site
 from recon.demo.clock import chance, make_grid
 from recon.demo.faults import Fault, chosen
+from recon.demo.integrated import integrated
 from recon.demo.laboratory import Laboratory
 from recon.demo.meters import Meters, Span, draw_errors
 from recon.demo.offsets import Offsets, draw_offsets
@@ -18,7 +19,7 @@ from recon.demo.sizes import Sizes
 from recon.demo.spoil import lost_by, spoil
 from recon.demo.surveys import Surveyors, log_events
 from recon.demo.truth import Truth, run_plant
-from recon.ingest.rows import Record, Series
+from recon.ingest.rows import Record, Series, TagDay
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -67,18 +68,24 @@ class DayObserved:
     index : int
         Of the day in ``truth.grid.days``.
     day : date
+    tag_days : tuple of TagDay
+        The readings integrated.
     series : tuple of Series
-        Readings at the truth's interval, that day alone.
+        The readings themselves at the truth's interval, that day alone.
     records : tuple of Record
         Assays, tickets, surveys at both cuts, and events.
     offsets : Offsets
+    truth : Truth
+        The same for all days of one study.
     """
 
     index: int
     day: date
+    tag_days: tuple[TagDay, ...]
     series: tuple[Series, ...]
     records: tuple[Record, ...]
     offsets: Offsets
+    truth: Truth
 
 
 class Observer:
@@ -218,7 +225,13 @@ def simulate_days(
         )
         series, records = observer.observe(span, counted=False)
         yield DayObserved(
-            index=index, day=grid.days[index], series=series, records=records, offsets=span.offsets
+            index=index,
+            day=grid.days[index],
+            tag_days=tuple(integrated(site, grid=grid, first=index, last=index, series=series)),
+            series=series,
+            records=records,
+            offsets=span.offsets,
+            truth=truth,
         )
 
 
