@@ -7,6 +7,7 @@ import sys
 import typer
 
 from recon import __version__
+from recon.cli.book import database, verify
 from recon.cli.check import check
 from recon.cli.solve import solve
 from recon.errors import ReconError
@@ -20,6 +21,8 @@ app = typer.Typer(
 )
 app.command("check")(check)
 app.command("solve")(solve)
+app.command("verify")(verify)
+app.add_typer(database, name="database")
 
 
 def _version(asked: bool) -> None:

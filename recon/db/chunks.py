@@ -74,12 +74,19 @@ def read_chunk(connection: Connection, site: str, digest: str) -> Chunk:
     return open_chunk(row)
 
 
+def unpacked(packed: bytes) -> bytes:
+    """Uncompress what was stored; nothing where it is damaged or holds more than one stream."""
+    stream = zlib.decompressobj()
+    try:
+        content = stream.decompress(packed)
+    except zlib.error:
+        return b""
+    return content if stream.eof and not stream.unused_data else b""
+
+
 def open_chunk(row: Row[Any]) -> Chunk:
     """Uncompress a stored chunk and check it against its digest; errors as above."""
-    try:
-        content = zlib.decompress(row.content)
-    except zlib.error:
-        content = b""
+    content = unpacked(row.content)
     found = digest_bytes(content)
     if found != row.digest:
         raise AlteredRecordError(

@@ -72,7 +72,7 @@ def compare_readings(before: Chunk, after: Chunk) -> tuple[int, int]:
 def _by_time(chunk: Chunk) -> dict[int, tuple[str, str, int]]:
     """Rows of a chunk of readings by their time: value and quality as written, known at."""
     rows: dict[int, tuple[str, str, int]] = {}
-    for line in chunk.content.decode().splitlines()[2:]:
+    for line in chunk.content.decode().removesuffix("\n").split("\n")[2:]:
         at, value, quality, known = line.split(",")
         rows[int(at)] = (value, quality, int(known))
     return rows

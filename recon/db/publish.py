@@ -18,7 +18,7 @@ from recon.app.identity import data_digest
 from recon.app.period import PeriodInputs, PeriodResult
 from recon.audit.canonical import canonical
 from recon.audit.digest import digest_bytes, result_digest
-from recon.db import claims, reads, records, trail
+from recon.db import claims, reads, records, tag_days, trail
 from recon.db.bulk import insert
 from recon.db.engines import Database, cut
 from recon.db.rows import RESULT_TABLES, Row, result_rows, table_digests
@@ -127,11 +127,15 @@ def _prepare(
 
 
 def _evidence(connection: Connection, inputs: PeriodInputs) -> list[str]:
-    """Chunks that inputs rest on, sorted; every row must have been kept before it is used."""
+    """
+    Lines of a manifest: every row in force with its chunk, tag days with their numbers, sorted.
+
+    Every row must have been kept as evidence before it is used.
+    """
     behind = records.chunks_behind(
         connection, inputs.site, inputs.records, inputs.knowledge_cut.astimezone(UTC)
     )
-    chunks = {row.chunk for row in inputs.tag_days}
+    lines = [tag_days.manifest_line(row) for row in inputs.tag_days]
     for record in inputs.records:
         version = (record.kind.value, record.natural_key, record.known_at.astimezone(UTC))
         if version not in behind:
@@ -139,8 +143,8 @@ def _evidence(connection: Connection, inputs: PeriodInputs) -> list[str]:
                 f"{record.kind.value} {record.natural_key} was never kept as evidence. Keep what "
                 "the sources give before computing from it; nothing was published."
             )
-        chunks.add(behind[version])
-    return sorted(chunks)
+        lines.append(canonical([*version, behind[version]]).decode())
+    return sorted(lines)
 
 
 def _write(

@@ -123,6 +123,24 @@ def row_values(record: Record, chunk: str, seen_at: datetime) -> tuple[Any, ...]
     )
 
 
+def from_row(row: Row[Any]) -> Record:
+    """Make a record from a row of the table."""
+    return Record(
+        kind=RowKind(row.kind),
+        document=row.document,
+        subject=row.subject,
+        item=row.item,
+        true_from=row.true_from,
+        true_to=row.true_to,
+        known_at=row.known_at,
+        value=row.value,
+        unit=row.unit,
+        stage=row.stage,
+        lot=row.lot,
+        extra=tuple((name, value) for name, value in json.loads(row.extra)),
+    )
+
+
 def in_force(
     connection: Connection, site: str, *, since: datetime, until: datetime, cut: datetime
 ) -> tuple[Record, ...]:
@@ -144,7 +162,7 @@ def in_force(
         RECORD.c.first_seen <= cut,
         ~superseded,
     )
-    found = [_record(row) for row in connection.execute(asked)]
+    found = [from_row(row) for row in connection.execute(asked)]
     return tuple(sorted(found, key=lambda r: (r.kind.value, r.natural_key)))
 
 
@@ -182,7 +200,7 @@ def _held(
     for row in rows:
         version = _version(row)
         if version not in latest or latest[version][0] < row.first_seen:
-            latest[version] = (row.first_seen, _record(row))
+            latest[version] = (row.first_seen, from_row(row))
     return {version: record for version, (_, record) in latest.items()}
 
 
@@ -225,20 +243,3 @@ def _select(connection: Connection, where: ColumnElement[bool]) -> list[Row[Any]
 
 def _version(row: Row[Any]) -> Version:
     return (row.kind, "|".join((row.document, row.subject, row.item, row.stage)), row.known_at)
-
-
-def _record(row: Row[Any]) -> Record:
-    return Record(
-        kind=RowKind(row.kind),
-        document=row.document,
-        subject=row.subject,
-        item=row.item,
-        true_from=row.true_from,
-        true_to=row.true_to,
-        known_at=row.known_at,
-        value=row.value,
-        unit=row.unit,
-        stage=row.stage,
-        lot=row.lot,
-        extra=tuple((name, value) for name, value in json.loads(row.extra)),
-    )

@@ -9,6 +9,7 @@ from typing import Any
 from sqlalchemy import Connection, Row, select
 
 from recon.app.book_types import Pulled
+from recon.audit.canonical import canonical
 from recon.db.chunks import read_chunk
 from recon.db.compare import (
     VANISHED,
@@ -87,6 +88,20 @@ def in_force(
     return tuple(_tag_day(found[key]) for key in sorted(found))
 
 
+def manifest_line(row: TagDay) -> str:
+    """Write a tag day with its chunk as a line of a manifest; when it was seen is left out."""
+    return canonical([getattr(row, name) for name in _NAMES]).decode()
+
+
+def manifest_lines(connection: Connection, site: str) -> frozenset[str]:
+    """Write every tag day the book holds as lines of manifests."""
+    asked = select(TAG_DAY).where(TAG_DAY.c.site == site)
+    return frozenset(manifest_line(_tag_day(row)) for row in connection.execute(asked))
+
+
+_NAMES = tuple(c.name for c in TAG_DAY.columns if c.name not in ("site", "first_seen"))
+
+
 def _held(
     connection: Connection, site: str, rows: Sequence[TagDay]
 ) -> dict[tuple[str, Any], TagDay]:
@@ -112,8 +127,7 @@ def _tag_day(row: Row[Any]) -> TagDay:
 
 
 def _values(row: TagDay, seen_at: datetime) -> tuple[Any, ...]:
-    names = [c.name for c in TAG_DAY.columns if c.name not in ("site", "first_seen")]
-    tag, day, *rest = (getattr(row, name) for name in names)
+    tag, day, *rest = (getattr(row, name) for name in _NAMES)
     return clean_values(TAG_DAY, (tag, day, seen_at, *rest))
 
 

@@ -89,5 +89,6 @@ def entries(connection: Connection, site: str, after: int = 0) -> Iterator[Entry
         .where(AUDIT_ENTRY.c.site == site, AUDIT_ENTRY.c.seq > after)
         .order_by(AUDIT_ENTRY.c.seq)
     )
-    for row in connection.execute(asked.execution_options(yield_per=1000)):
-        yield Entry(site=site, **row._mapping)
+    with connection.execute(asked.execution_options(yield_per=1000)) as found:
+        for row in found:
+            yield Entry(site=site, **row._mapping)

@@ -48,7 +48,7 @@ CREATE TABLE evidence_chunk (
     FOREIGN KEY (site, query) REFERENCES source_query (site, digest)
 ) STRICT, WITHOUT ROWID;
 
--- The chunks a run rests on, one digest a line, compressed; addressed by the SHA-256 of those lines.
+-- The rows a run rests on with their chunks, one canonical line each, compressed; addressed by the SHA-256 of those lines.
 CREATE TABLE evidence_manifest (
     site TEXT NOT NULL,
     digest TEXT NOT NULL,

@@ -167,29 +167,52 @@ def result(scale: float = 1.0) -> PeriodResult:
     """A result of every kind of row, numbers that need all their digits among them."""
     days = [date(2026, 1, day) for day in (1, 2, 3)]
     return PeriodResult(
-        measurements=tuple(
+        measurements=(
+            *(
+                MeasurementRow(
+                    day=day,
+                    name="WI-101",
+                    kind="meter",
+                    stream="feed",
+                    node=None,
+                    boundary=None,
+                    quantity="mass",
+                    basis="amount",
+                    unit="t",
+                    value=scale * 1000 / 3,
+                    u_random=0.1,
+                    u=1 / 7,
+                    held=False,
+                    estimated=False,
+                    reconciled=scale * 1001 / 3,
+                    adjustment=scale / 3,
+                    standardised=-0.0,
+                    redundant=True,
+                    sources="[]",
+                )
+                for day in days
+            ),
             MeasurementRow(
-                day=day,
-                name="WI-101",
-                kind="meter",
-                stream="feed",
-                node=None,
-                boundary=None,
-                quantity="mass",
+                day=days[-1],
+                name="shed survey",
+                kind="stock",
+                stream=None,
+                node="shed",
+                boundary="closing",
+                quantity="Cu",
                 basis="amount",
                 unit="t",
-                value=scale * 1000 / 3,
-                u_random=0.1,
-                u=1 / 7,
-                held=False,
-                estimated=False,
-                reconciled=scale * 1001 / 3,
-                adjustment=scale / 3,
-                standardised=-0.0,
-                redundant=True,
+                value=scale * 12.5,
+                u_random=None,
+                u=0.5,
+                held=True,
+                estimated=True,
+                reconciled=None,
+                adjustment=None,
+                standardised=None,
+                redundant=False,
                 sources="[]",
-            )
-            for day in days
+            ),
         ),
         estimates=tuple(
             EstimateRow(
@@ -209,7 +232,7 @@ def result(scale: float = 1.0) -> PeriodResult:
             for quantity in ("mass", "Cu")
         ),
         offsets=(
-            OffsetRow(source="belt scale", draw_from=MONTH, value=-1e-3, u=2e-3, standardised=None),
+            OffsetRow(source="belt scale", draw_from=MONTH, value=-1e-3, u=2e-3, standardised=-0.5),
         ),
         findings=(
             Finding(
