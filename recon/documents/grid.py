@@ -5,10 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
+from recon.tabulate.columns import TABLE
+
 if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
 
     from recon.documents.find import Cells
+    from recon.tabulate.cells import Cell
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -27,6 +30,8 @@ class Grid:
         Columns followed by a column of standard uncertainties.
     dated : bool
         Lines are of days: the second key column is the day.
+    own_unit : bool
+        Some columns have no unit in their head: the last sheet column names each line's.
     """
 
     sheet: str
@@ -35,6 +40,7 @@ class Grid:
     columns: tuple[str, ...]
     with_u: frozenset[str]
     dated: bool = False
+    own_unit: bool = False
 
     @property
     def heads(self) -> int:
@@ -49,7 +55,7 @@ class Grid:
     @property
     def width(self) -> int:
         """Number of sheet columns."""
-        return self.heads + len(self.columns) + len(self.with_u)
+        return self.heads + len(self.columns) + len(self.with_u) + self.own_unit
 
 
 @dataclass
@@ -124,4 +130,12 @@ def grid_of(
         columns=tuple(c for c in cells.columns(table) if c in seen and c not in out),
         with_u=frozenset(c.column for c in present if c.u is not None and c.column not in out),
         dated=len(periods) > 1,
+        own_unit=any(has_own_unit(c) for c in present),
+    )
+
+
+def has_own_unit(cell: Cell) -> bool:
+    """Whether a number's unit stands with the cell and not with its column."""
+    return (
+        cell.text is None and TABLE[cell.table].column(cell.column).unit == "" and cell.unit != ""
     )

@@ -6,6 +6,7 @@ from datetime import date
 from typing import TYPE_CHECKING, Any
 
 from recon.documents.find import NO_VALUE, Cells, digits, shown
+from recon.documents.grid import Grid, has_own_unit
 from recon.documents.heading import CAUTIONS
 from recon.tabulate.columns import TABLE, TABLES
 
@@ -13,7 +14,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from recon.documents.formulas import Formulas
-    from recon.documents.grid import Grid, Places
+    from recon.documents.grid import Places
     from recon.documents.heading import Heading
     from recon.findings import Finding
     from recon.tabulate.cells import Cell
@@ -91,6 +92,10 @@ class Writer:
                 self._value(sheet, i, at, cell, formula.text if formula else "")
                 if column in grid.with_u and cell.u is not None:
                     sheet.write_number(i, at + 1, cell.u, self._number(digits(cell) + 1, u=True))
+            if grid.own_unit:
+                found = (cells.at(grid.table, period, row, c) for c in grid.columns)
+                units = {c.unit for c in found if c is not None and has_own_unit(c)}
+                sheet.write_string(i, grid.width - 1, ", ".join(sorted(units)))
         self._frame(sheet, len(grid.keys), grid.width, grid.heads)
 
     def year(self, cells: Cells, places: Places) -> None:
@@ -275,6 +280,8 @@ class Writer:
             titles.append(f"{column.title}{of}{unit}")
             if name in grid.with_u:
                 titles.append(f"±{unit}")
+        if grid.own_unit:
+            titles.append("unit where the head has none")
         self._titles(sheet, titles)
 
     def _titles(self, sheet: Any, titles: Sequence[str]) -> None:

@@ -304,6 +304,15 @@ TABLES: tuple[Table, ...] = (
         columns=(
             _c("method", "Method", "surveyed, estimated, rolled by difference, take-on.", "", 0),
             _c("time", "Time", "How far the survey was rolled to the cut.", "", 0),
+            _c("document", "Documents", "Evidence of the closing: survey and samples.", "", 0),
+            _c(
+                "surveyed",
+                "As counted",
+                "Before its conversion: volume, wet mass or pieces; unit in the cell.",
+                "",
+                1,
+            ),
+            _c("moisture", "Moisture", "Applied to the wet mass counted.", "%", 2),
             _c("opening_signed", "Opening, signed", "Last month's closing as printed."),
             _c("opening_booked", "Booked to opening", "Stock lines of earlier months."),
             _c("opening", "Opening", "opening_signed + opening_booked."),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 from recon.flowsheet.network import MASS
@@ -12,6 +13,7 @@ from recon.tabulate.rounding import leaf_decimals, printed
 from recon.tabulate.stream_table import PER_UNIT
 
 if TYPE_CHECKING:
+    from recon.ingest.measured import Measured
     from recon.tabulate.as_measured import Stated
     from recon.tabulate.month import Month, Sheet
 
@@ -60,7 +62,11 @@ def _write(sheet: Sheet, node: str, q: str, closing: Stated) -> None:
     u = month.measured.readings.uncertainty
     opening = month.measured.stock(0, node, q)
     sheet.words(TABLE, name, row, "method", _method(opening, closing))
-    sheet.words(TABLE, name, row, "time", _rolled(month, closing))
+    counted = _closing_readings(month, closing)
+    sheet.words(TABLE, name, row, "time", _rolled(counted))
+    evidence = dict.fromkeys(key for m in counted for key in m.evidence)
+    sheet.words(TABLE, name, row, "document", ", ".join(evidence))
+    _write_counted(sheet, row, [m for m in counted if m.quantity == q])
     signed = next((o for o in month.opening if (o.node, o.quantity) == (node, q)), None)
     if signed is not None:
         value = None if signed.value is None else _printed(signed.value, q)
@@ -207,20 +213,30 @@ def _method(opening: Stated, closing: Stated) -> str:
     return f"{how}; opening is the take-on" if opening.take_on else how
 
 
-def _rolled(month: Month, closing: Stated) -> str:
-    """How far the survey that counts was moved to the cut."""
+def _closing_readings(month: Month, closing: Stated) -> list[Measured]:
+    """Surveys and samples that the closing rests on."""
     if closing.number is None:
+        return []
+    measured = month.ingested.measured
+    places = [i for i in closing.number.slopes if i < len(measured)]
+    return [measured[i] for i in sorted(places) if measured[i].boundary == "closing"]
+
+
+def _write_counted(sheet: Sheet, row: str, readings: Sequence[Measured]) -> None:
+    """What the surveyor counted, before anything was converted."""
+    if len(readings) != 1 or readings[0].raw is None or readings[0].basis != "amount":
+        return
+    m, name = readings[0], sheet.month.name
+    sheet.number(TABLE, name, row, "surveyed", m.raw, unit=m.raw_unit, basis="read")
+    if m.moisture is not None:
+        sheet.number(TABLE, name, row, "moisture", 100.0 * m.moisture, basis="read")
+
+
+def _rolled(readings: Sequence[Measured]) -> str:
+    """How far the survey that counts was moved to the cut."""
+    if not readings:
         return ""
-    hours = [
-        m.rolled_hours
-        for i in closing.number.slopes
-        if i < len(month.ingested.measured)
-        for m in (month.ingested.measured[i],)
-        if m.node is not None and m.boundary == "closing"
-    ]
-    if not hours:
-        return ""
-    far = max(hours, key=abs)
+    far = max((m.rolled_hours for m in readings), key=abs)
     if far == 0.0:
         return "at the cut"
     return f"rolled {abs(far):.1f} h {'forward' if far > 0 else 'back'} to the cut"

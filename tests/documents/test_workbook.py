@@ -221,3 +221,10 @@ def test_what_changed_since_an_earlier_revision_stands_on_a_sheet(tables: Tables
     for sheet, address, _ in book.formulas():
         cached = book.cached[sheet][address].value
         assert book.value(sheet, address) == pytest.approx(cached, rel=1e-9, abs=1e-9)
+
+
+def test_figures_without_a_unit_in_their_head_have_it_in_their_line(content: bytes) -> None:
+    page = load_workbook(io.BytesIO(content))["measured-reconciled"]
+    unit = page[1][-1].column_letter
+    by_row = {r[0].value: page[f"{unit}{r[0].row}"].value for r in page.iter_rows(min_row=2)}
+    assert (by_row["CONC mass"], by_row["CONC Cu"]) == ("t", "%")

@@ -70,3 +70,11 @@ def test_a_month_without_errors_leaves_nothing_unaccounted() -> None:
     for c in tables.cells:
         if c.table == "node-closure" and c.column == "reconciled_imbalance":
             assert c.value == pytest.approx(0.0, abs=1e-5)
+
+
+def test_a_stock_shows_what_was_counted_and_the_documents_it_rests_on() -> None:
+    tables = stated(five_node_month(through=date(2026, 1, 2)))
+    assert "rolled 48.0 h forward" in (cell(tables, "stocks", "SHED mass", "time").text or "")
+    counted = cell(tables, "stocks", "SHED mass", "surveyed")
+    assert (counted.unit, counted.basis) == ("m3", "read")
+    assert cell(tables, "stocks", "SHED Cu", "document").text
