@@ -167,3 +167,37 @@ def test_a_place_that_last_month_did_not_state_is_taken_on() -> None:
     other = OpeningStock(node="BIN", quantity="Cu", value=3.0, u=0.1, basis="read")
     tables = february().tables(opening=[other])
     assert "take-on" in (cell(tables, SITE, "Cu", "note", "2026-02").text or "")
+
+
+def surveyed_by_density(first: date, opening: float, closing: float) -> Paper:
+    """Both surveys rest on one density known to 3 %, which lasts; 4 t of their own."""
+    density = ErrorSource(name="survey density", u=0.03, relative=True, lasts="throughout")
+    paper = Paper(
+        site=shed_site(sources=[density]),
+        first=first,
+        draws=(Draw(source="survey density", first=1, u=0.03),),
+    )
+    paper.stock(0, opening, u=4.0, shared={0: 1.0})
+    paper.stock(2, closing, u=4.0, shared={0: 1.0})
+    for p in (1, 2):
+        paper.amount(p, "IN", 250.0)
+        paper.amount(p, "OUT", 250.0 + (opening - closing) / 2)
+    return paper
+
+
+def test_a_density_that_lasts_cancels_between_a_signed_opening_and_the_closing() -> None:
+    january = surveyed_by_density(date(2026, 1, 1), 1000.0, 900.0).tables()
+    tables = surveyed_by_density(FEBRUARY, 900.0, 800.0).tables(
+        opening=january.closing, year=january.leaves
+    )
+    found = cell(tables, SITE, "Cu", "unaccounted", "2026-02")
+    assert found.u == pytest.approx((16 + 16 + 4 + (100 * 0.03) ** 2) ** 0.5)
+    run = cell(tables, SITE, "Cu", "running_unaccounted", "2026-02")
+    # first opening 1000, last closing 800: the density moves their difference
+    assert run.u == pytest.approx((16 + 16 + 8 + (200 * 0.03) ** 2) ** 0.5)
+
+
+def test_twelve_months_keep_a_lasting_density_of_both_stocks_together() -> None:
+    tables = surveyed_by_density(date(2026, 1, 1), 1000.0, 900.0).tables()
+    u = (16 + 16 + 12 * 4 + (100 * 0.03) ** 2) ** 0.5
+    assert value(tables, SITE, "Cu", "loss_not_shown_12") == pytest.approx(3.6448536 * u)

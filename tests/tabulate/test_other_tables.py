@@ -227,3 +227,11 @@ def test_readings_that_are_compared_only_keep_their_own_shared_sources() -> None
     )
     found = cell(tables, "site-balance", "Cu", "products")
     assert found.u == pytest.approx((2 + 48.0**2) ** 0.5)
+
+
+def test_printed_and_unrounded_unaccounted_agree_where_something_is_discarded() -> None:
+    tables = mill_month().tables()
+    for row in ("Cu", "concentrator Cu", "concentrator mass"):
+        table = "site-balance" if row == "Cu" else "section-balance"
+        exact = value(tables, "unaccounted-bridge", f"{row} 999 stated", "unaccounted")
+        assert exact == pytest.approx(value(tables, table, row, "unaccounted"), abs=0.2)

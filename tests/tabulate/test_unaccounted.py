@@ -158,3 +158,20 @@ def test_a_reading_only_compared_counts_where_nothing_else_measures_the_amount()
     tables = paper.tables()
     assert value(tables, SITE, "Cu", "products") == 478.0
     assert cell(tables, "measured-reconciled", "OUT monitor", "word").text == "compared only"
+
+
+def test_a_held_figure_counts_before_a_meter_declared_first() -> None:
+    paper = simple_month()
+    for p in (1, 2):
+        paper.amount(p, "OUT", 235.0, tag="OUT settled", use="held", u=0.1)
+    assert value(paper.tables(), SITE, "Cu", "products") == 470.0
+
+
+def test_a_real_reading_counts_before_an_estimated_one_declared_first() -> None:
+    paper = simple_month()
+    paper.measured = [m for m in paper.measured if m.tag != "OUT Cu"]
+    for p in (1, 2):
+        paper.amount(p, "OUT", 200.0, estimated=True)
+        paper.amount(p, "OUT", 241.0, tag="OUT second scale")
+    found = cell(paper.tables(), SITE, "Cu", "products")
+    assert (found.value, found.basis) == (482.0, "read")
