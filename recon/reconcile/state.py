@@ -7,7 +7,7 @@ sources follow, in units of their own standard uncertainty, so their prior is N(
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Literal, NamedTuple
 
@@ -157,7 +157,8 @@ class State:
 def state_of(problem: Problem) -> State:
     """Lay a problem out as arrays; the order of its streams and readings does not matter."""
     columns: list[Column] = list(unknowns(problem.flowsheets))
-    alike, sums = _common_compositions(problem, columns)
+    fixed = _fixed(problem)
+    alike, sums = _common_compositions(problem, columns, {u for u, v in fixed.items() if v == 0.0})
     index: dict[Column, int] = {column: i for i, column in enumerate(columns)}
     rows = [*balance_rows(problem.flowsheets), *problem.relations]
     equalities = _rows_matrix([row.form for row in rows], index)
@@ -170,7 +171,7 @@ def state_of(problem: Problem) -> State:
         equalities = sparse.csr_array(sparse.vstack([equalities, sparse.csr_array(extra)]))
         right = np.concatenate([right, np.ones(len(sums))])
         names += [name for name, _ in sums]
-    bounds = [*bound_rows(problem.flowsheets)]
+    bounds = [row for row in bound_rows(problem.flowsheets) if not _settled(row, fixed)]
     matrix = _rows_matrix([row.form for row in bounds], index)
     floors = np.array([row.equals for row in bounds])
     shares = [c for c in columns if isinstance(c, Share)]
@@ -202,15 +203,43 @@ def state_of(problem: Problem) -> State:
     )
 
 
+def _fixed(problem: Problem) -> dict[Unknown, float]:
+    """Unknowns that a relation of one term ties to a number, as for a stream that stands."""
+    return {
+        row.form[0][0]: row.equals / row.form[0][1]
+        for row in problem.relations
+        if len(row.form) == 1 and row.form[0][1] != 0.0
+    }
+
+
+def _settled(row: Row, fixed: Mapping[Unknown, float]) -> bool:
+    """
+    Whether relations alone settle that a bound holds: stating it again would leave its force free.
+
+    A bound they break stays, so that the contradiction is named.
+    """
+    if any(unknown not in fixed for unknown, _ in row.form):
+        return False
+    return sum(c * fixed[unknown] for unknown, c in row.form) >= row.equals
+
+
 def _common_compositions(
-    problem: Problem, columns: list[Column]
+    problem: Problem, columns: list[Column], standing: Collection[Unknown]
 ) -> tuple[list[tuple[Amount, Share, Common]], list[tuple[str, list[Share]]]]:
-    """Add shares and common vectors as columns; list the products and the sums of shares."""
+    """
+    Add shares and common vectors as columns; list the products and the sums of shares.
+
+    A stream tied to zero has no composition and takes no part.
+    """
     products: list[tuple[Amount, Share, Common]] = []
     sums: list[tuple[str, list[Share]]] = []
     for period, sheet in enumerate(problem.flowsheets, start=1):
         for node in sheet.nodes:
-            leaving = sheet.leaving(node.name)
+            leaving = [
+                s
+                for s in sheet.leaving(node.name)
+                if not all(Amount(period, s.name, q) in standing for q in s.carries)
+            ]
             if not node.same_composition or len(leaving) < 2:
                 continue
             members = [Share(period, node.name, s.name) for s in leaving]

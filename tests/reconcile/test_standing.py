@@ -2,10 +2,15 @@
 
 from __future__ import annotations
 
-from recon.flowsheet.balances import Amount
+import pytest
+
+from recon.flowsheet.balances import Amount, Row
+from recon.flowsheet.network import Flowsheet, Node, Stream
 from recon.reconcile.problem import Measurement, MeasurementKind, Part, Problem
 from recon.reconcile.read import STREAM_STANDS, reconcile
+from recon.reconcile.state import state_of
 from recon.solve.closed_form import ClosedForm
+from recon.solve.convex import Convex
 from tests.networks import network
 
 
@@ -50,3 +55,55 @@ def test_a_ratio_whose_denominator_is_zero_is_set_aside_and_said() -> None:
     assert (fraction.value, fraction.reason) == (None, STREAM_STANDS)
     row = next(m for m in answer.measurements if m.measurement.name == "b Cu")
     assert (row.reconciled, row.redundant) == (None, False)
+
+
+def test_a_stream_tied_to_zero_has_no_composition_and_no_bounds_of_its_own() -> None:
+    """Two streams of one composition, one of them standing: the other takes everything."""
+    quantities = ("mass", "Cu")
+    sheet = Flowsheet(
+        quantities=quantities,
+        nodes=(Node(name="bin", conserves=quantities, same_composition=True),),
+        streams=(
+            Stream(name="in", source=None, target="bin", carries=quantities),
+            Stream(name="a", source="bin", target=None, carries=quantities),
+            Stream(name="b", source="bin", target=None, carries=quantities),
+        ),
+    )
+    problem = Problem(
+        flowsheets=(sheet,),
+        measurements=(
+            Measurement(
+                name="in",
+                period=1,
+                kind=MeasurementKind.METER,
+                parts=(Part(of=((Amount(1, "in", "mass"), 1.0),)),),
+                value=100.0,
+                u=1.0,
+            ),
+            Measurement(
+                name="in Cu",
+                period=1,
+                kind=MeasurementKind.ASSAY,
+                parts=(
+                    Part(
+                        of=((Amount(1, "in", "Cu"), 1.0),),
+                        over=((Amount(1, "in", "mass"), 1.0),),
+                    ),
+                ),
+                value=0.25,
+                u=0.01,
+            ),
+        ),
+        relations=tuple(
+            Row(name=f"b {q} stands", form=((Amount(1, "b", q), 1.0),)) for q in quantities
+        ),
+    )
+    state = state_of(problem)
+    assert len(state.alike) == 0
+    assert not [name for name in state.bound_names if "stream b" in name]
+    for engine in (ClosedForm(), Convex()):
+        answer = reconcile(problem, engine)
+        found = {(e.unknown, e.fraction): e.value for e in answer.estimates}
+        assert found[Amount(1, "a", "Cu"), False] == pytest.approx(25.0)
+        assert found[Amount(1, "b", "Cu"), False] == pytest.approx(0.0, abs=1e-9)
+        assert found[Amount(1, "b", "Cu"), True] is None
