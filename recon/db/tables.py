@@ -78,7 +78,7 @@ TAG_DAY = _table(
     "site tag day first_seen",
     "site tag day:day first_seen:time chunk amount:number? covered_hours:number "
     "day_hours:number running_hours:number mean:number? readings:whole bad:whole "
-    "last_known:time",
+    "last_known:time said",
 )
 RECORD = _table(
     "record",

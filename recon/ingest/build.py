@@ -27,6 +27,7 @@ from recon.ingest.measured import IngestedMonth
 from recon.ingest.measurements import Candidate, in_problem, renewed, state_measurements
 from recon.ingest.meters import metered, running
 from recon.ingest.reading import Reading
+from recon.ingest.said import read_back
 from recon.ingest.statement import one_day, state_month
 from recon.ingest.surveys import surveyed
 from recon.ingest.tickets import Weighbridge, ticketed
@@ -78,6 +79,7 @@ def ingest_month(
     context = context_of(versions, days, tag_days, records, decisions)
     laboratory, weighbridge = Laboratory(context), Weighbridge(context)
     inputs = Inputs(context, laboratory)
+    _tell_again(context)
     not_running = _not_running(context, weighbridge)
     readings = [
         *_amounts(context, inputs, weighbridge, not_running),
@@ -166,6 +168,14 @@ def with_references(
             replace(r, provisional=False) if r.tag in reference else r for r in month.recipes
         ),
     )
+
+
+def _tell_again(context: Context) -> None:
+    """Take up what integration found in the month's readings."""
+    for (_, day), tag_day in sorted(context.tag_days.items()):
+        period = context.period(day)
+        if period is not None and tag_day.said:
+            context.findings.extend(read_back(tag_day.said, period))
 
 
 def _not_running(context: Context, weighbridge: Weighbridge) -> list[tuple[date, str]]:

@@ -141,6 +141,8 @@ class TagDay:
         Rows in the day and those set aside by quality or range.
     last_known : datetime
         Latest known-at of its rows, aware UTC.
+    said : str
+        What integration found, see ``recon.ingest.said``; "" where nothing.
     """
 
     tag: str
@@ -154,3 +156,4 @@ class TagDay:
     readings: int
     bad: int
     last_known: datetime
+    said: str = ""

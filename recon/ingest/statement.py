@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
+from recon.declare.site_file import flowsheet_of
 from recon.flowsheet.balances import Amount, Linear, Row, Stock, Unknown
-from recon.flowsheet.network import Flowsheet, Node, Stream
 from recon.ingest.measurements import in_problem
 from recon.reconcile.problem import Draw, Effect, Figure, Part, Problem
 
@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
     from datetime import date
 
-    from recon.declare.site import Site, Term
+    from recon.declare.site import Term
     from recon.ingest.context import Context
     from recon.ingest.measured import Measured
     from recon.reconcile.problem import Measurement
@@ -90,27 +90,6 @@ def one_day(problem: Problem, p: int) -> Problem:
             )
             for f in problem.figures
             if f.period == p
-        ),
-    )
-
-
-def flowsheet_of(site: Site) -> Flowsheet:
-    """Draw a site version's flowsheet."""
-    return Flowsheet(
-        quantities=site.quantities,
-        nodes=tuple(
-            Node(
-                name=n.name,
-                conserves=n.conserves,
-                same_composition=n.same_composition,
-                stock=n.stock,
-                bounds=tuple((q, low, high) for q, (low, high) in sorted(n.bounds.items())),
-            )
-            for n in site.nodes
-        ),
-        streams=tuple(
-            Stream(name=s.name, source=s.source, target=s.target, carries=s.carries)
-            for s in site.streams
         ),
     )
 

@@ -72,6 +72,7 @@ CREATE TABLE tag_day (
     readings bigint NOT NULL,
     bad bigint NOT NULL,
     last_known timestamptz NOT NULL,
+    said text NOT NULL,
     PRIMARY KEY (site, tag, day, first_seen),
     FOREIGN KEY (site, chunk) REFERENCES evidence_chunk (site, digest)
 );

@@ -72,6 +72,7 @@ CREATE TABLE tag_day (
     readings INTEGER NOT NULL,
     bad INTEGER NOT NULL,
     last_known TEXT NOT NULL,
+    said TEXT NOT NULL,
     PRIMARY KEY (site, tag, day, first_seen),
     FOREIGN KEY (site, chunk) REFERENCES evidence_chunk (site, digest)
 ) STRICT, WITHOUT ROWID;
