@@ -26,11 +26,13 @@ from recon.ingest.laboratory import Laboratory
 from recon.ingest.measured import IngestedMonth
 from recon.ingest.measurements import Candidate, in_problem, renewed, state_measurements
 from recon.ingest.meters import metered, running
+from recon.ingest.ratios import find_wrong_ratios
 from recon.ingest.reading import Reading
 from recon.ingest.said import read_back
 from recon.ingest.statement import one_day, state_month
 from recon.ingest.surveys import surveyed
 from recon.ingest.tickets import Weighbridge, ticketed
+from recon.ingest.windows import find_implausible
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Mapping, Sequence
@@ -85,12 +87,15 @@ def ingest_month(
         *_amounts(context, inputs, weighbridge, not_running),
         *_grades(context, inputs, laboratory),
     ]
-    stocks = at_boundaries(context, Flows(context, readings, weighbridge), surveyed(context))
+    flows = Flows(context, readings, weighbridge)
+    stocks = at_boundaries(context, flows, surveyed(context))
     known: dict[str, list[Reading]] = defaultdict(list)
     for instrument, reading in readings:
         known[instrument.tag].append(reading)
     for reading in stocks.known:
         known[reading.tag].append(reading)
+    find_wrong_ratios(context, readings, known)
+    find_implausible(context, flows)
     candidates = [
         Candidate(instrument=i, reading=r)
         for i, r in readings

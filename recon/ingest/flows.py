@@ -99,6 +99,19 @@ class Flows:
             pulls += part.pulls
         return Flowed(value=value, u=float(np.sqrt(variance)), pulls=together(pulls))
 
+    def on(self, stream: str, quantity: str, day: date) -> float | None:
+        """Amount of a day as measured [t]; metal as mass times grade where only those are."""
+        direct = self._amounts.get((stream, quantity), {}).get(day)
+        if direct is not None:
+            return direct[1].value
+        mass = self._amounts.get((stream, MASS), {}).get(day)
+        grade = self.grade_on(stream, quantity, day)
+        return None if mass is None or grade is None else mass[1].value * grade
+
+    def grade_on(self, stream: str, quantity: str, day: date) -> float | None:
+        """Grade of a day as measured [1]."""
+        return self._grades.get((stream, quantity), {}).get(day)
+
     def grade(self, stream: str, quantity: str, day: date) -> float | None:
         """Latest known grade of a stream up to a day [1]."""
         known = self._grades.get((stream, quantity), {})
