@@ -180,7 +180,7 @@ def _tell_again(context: Context) -> None:
     for (_, day), tag_day in sorted(context.tag_days.items()):
         period = context.period(day)
         if period is not None and tag_day.said:
-            context.findings.extend(read_back(tag_day.said, period))
+            context.findings.update(dict.fromkeys(read_back(tag_day.said, period)))
 
 
 def _not_running(context: Context, weighbridge: Weighbridge) -> list[tuple[date, str]]:

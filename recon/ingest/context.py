@@ -63,8 +63,8 @@ class Context:
     records : dict
         By kind, in natural-key order.
     decisions : tuple of Decision
-    findings : list of Finding
-        Grows while rules run; only findings on days of the month are kept.
+    findings : dict
+        In the order found, each once; grows while rules run. Only those on days of the month.
     """
 
     versions: tuple[Version, ...]
@@ -73,12 +73,16 @@ class Context:
     tag_days: dict[tuple[str, date], TagDay]
     records: dict[RowKind, tuple[Record, ...]]
     decisions: tuple[Decision, ...]
-    findings: list[Finding] = field(default_factory=list)
+    findings: dict[Finding, None] = field(default_factory=dict)
 
     @cached_property
     def all_days(self) -> tuple[date, ...]:
         """History, then the month."""
         return (*self.history, *self.days)
+
+    @cached_property
+    def _in_force(self) -> dict[date, Version]:
+        return {}
 
     @cached_property
     def _place(self) -> dict[date, int]:
@@ -90,8 +94,10 @@ class Context:
 
     def version(self, day: date) -> Version:
         """Give the site version in force on a day: the last whose ``valid_from`` is reached."""
-        reached = [v for v in self.versions if v.site.valid_from <= day]
-        return reached[-1] if reached else self.versions[0]
+        if day not in self._in_force:
+            reached = [v for v in self.versions if v.site.valid_from <= day]
+            self._in_force[day] = reached[-1] if reached else self.versions[0]
+        return self._in_force[day]
 
     def hours(self, day: date) -> float:
         """Length of a plant day [h]."""
@@ -152,8 +158,7 @@ class Context:
             period=None if day is None else self.period(day),
             evidence=evidence,
         )
-        if finding not in self.findings:
-            self.findings.append(finding)
+        self.findings.setdefault(finding)
 
     def decided(self, tag: str, day: date) -> tuple[Decision, ...]:
         """Approved decisions on a tag that cover a day, in the order given."""

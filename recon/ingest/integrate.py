@@ -23,6 +23,7 @@ from recon.ingest.pieces import (
     hold_of,
     pieces_of,
     times,
+    usual_interval,
     where_on,
     within,
 )
@@ -188,7 +189,7 @@ def _tag_day(
     counted = None
     if instrument.kind == "totaliser":
         counted = count(series.at[readings.flags], series.value[readings.flags], instrument.modulus)
-        known = clipped(counted.rate, work.start, work.end)
+        known = clipped(counted.rate, work.start, work.end, interval=usual_interval(series.at))
     else:
         known = _signal(work, instrument, readings)
         if instrument.tag in work.signals:

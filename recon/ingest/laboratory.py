@@ -73,6 +73,7 @@ class Laboratory:
 
     def __init__(self, context: Context) -> None:
         self._samples: dict[str, list[Sample]] = defaultdict(list)
+        self._daily: dict[str, dict[date, float]] = {}
         groups: dict[tuple[str, str, str], list[Record]] = defaultdict(list)
         for row in context.records[RowKind.ASSAY]:
             groups[row.subject, row.item, row.document].append(row)
@@ -112,8 +113,10 @@ class Laboratory:
 
     def daily(self, tag: str) -> dict[date, float]:
         """Give the known value of each day [instrument's unit], weighted by hours."""
-        days = sorted({d for s in self.samples(tag) for d, _ in s.hours})
-        return {d: sum(s.value * w for s, w in self.on(tag, d)) for d in days}
+        if tag not in self._daily:
+            days = sorted({d for s in self.samples(tag) for d, _ in s.hours})
+            self._daily[tag] = {d: sum(s.value * w for s, w in self.on(tag, d)) for d in days}
+        return self._daily[tag]
 
 
 def _sample(context: Context, instrument: Instrument, rows: list[Record]) -> Sample | None:

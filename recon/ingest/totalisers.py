@@ -96,9 +96,17 @@ def count(at: Instants, value: Values, modulus: float | None) -> Counted:
     )
 
 
-def clipped(pieces: Pieces, start: int, end: int) -> Pieces:
-    """Cut a rate to a day; a difference over its edge is shared by time."""
-    begin, finish = np.maximum(pieces.begin, start), np.minimum(pieces.end, end)
+def clipped(pieces: Pieces, start: int, end: int, *, interval: int = 0) -> Pieces:
+    """
+    Cut a rate to a day; a difference over its edge is shared by time.
+
+    Where the next day's first reading is not there yet, the last rate stands for up to two usual
+    intervals to the day's end.
+    """
+    stop = pieces.end.copy()
+    if len(stop) and end - int(stop[-1]) <= 2 * interval:
+        stop[-1] = max(int(stop[-1]), end)
+    begin, finish = np.maximum(pieces.begin, start), np.minimum(stop, end)
     keep = finish > begin
     left = pieces.left[keep]
     return Pieces(begin=begin[keep], end=finish[keep], left=left, right=left)

@@ -62,3 +62,11 @@ def test_a_small_step_back_counts_as_it_is_and_is_said() -> None:
     days, findings = day_of([COUNTER], [readings])
     assert days["FQ-1"].amount == pytest.approx(180.0)
     assert [f.code for f in findings if f.code.startswith("totaliser")] == ["totaliser-back"]
+
+
+def test_the_last_minutes_of_a_day_take_the_last_rate_until_the_next_reading_comes() -> None:
+    readings = series(100.0 + 5.0 * np.arange(48), tag="FQ-1", every=HOUR // 2)
+    days, findings = day_of([COUNTER], [readings])
+    assert days["FQ-1"].covered_hours == pytest.approx(24.0)
+    assert days["FQ-1"].amount == pytest.approx(240.0)
+    assert findings == ()
