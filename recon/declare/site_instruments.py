@@ -199,8 +199,9 @@ def _uncertainty(place: str, i: Instrument, faults: list[str]) -> None:
             )
         return
     if i.uncertainty.zero <= 0:
+        unit = "t" if attached and i.basis == "amount" else i.unit
         faults.append(
-            f"{place}, uncertainty.zero: a standard uncertainty > 0 is expected [{i.unit}], "
+            f"{place}, uncertainty.zero: a standard uncertainty > 0 is expected [{unit}], "
             f"found {i.uncertainty.zero:g}."
         )
     for key, value in _relative_parts(i.uncertainty):

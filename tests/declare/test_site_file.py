@@ -150,7 +150,11 @@ def test_every_list_of_a_site_has_a_table_in_the_file() -> None:
         (without("instrument", "ORE.WT", "uncertainty"), "a reading has no weight"),
         (
             putting("instrument", "ORE.WT", uncertainty={"zero": 0}),
-            "uncertainty.zero: a standard uncertainty > 0 is expected [t/h], found 0",
+            "uncertainty.zero: a standard uncertainty > 0 is expected [t], found 0",
+        ),
+        (
+            putting("instrument", "ORE Cu", uncertainty={"zero": -1}),
+            "uncertainty.zero: a standard uncertainty > 0 is expected [%], found -1",
         ),
         (
             putting("instrument", "ORE.WT", uncertainty={"zero": 1, "relative": 2}),
