@@ -7,13 +7,21 @@ than believed, and every fault carries the address where a person finds it.
 from __future__ import annotations
 
 import csv
+import re
 import zipfile
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from io import StringIO
+from itertools import zip_longest
 from pathlib import Path
 
 from recon.errors import ContractError, UnreadableFileError
+
+NUMERIC = {"value", "quality", "at", "true_from", "true_to", "known_at"}
+"""Columns of a CSV file in which a number is meant as one."""
+
+WHOLE = re.compile(r"[+-]?\d+")
+DECIMAL = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
 
 MOST_BYTES = 20_000_000
 MOST_UNPACKED = 200_000_000
@@ -110,25 +118,33 @@ def _csv(path: Path) -> Table:
     mark = ";" if head.count(";") > head.count(",") else ","
     reader = csv.reader(StringIO(text, newline=""), delimiter=mark, strict=True)
     try:
-        rows = [(reader.line_num, [_given(cell) for cell in row]) for row in reader]
+        lines = [(reader.line_num, row) for row in reader]
     except csv.Error as error:
         raise UnreadableFileError(
             str(path), f"is not CSV: {error}, line {reader.line_num}."
         ) from error
+    names = next((row for _, row in lines if any(cell.strip() for cell in row)), [])
+    columns = [name.strip() for name in names]
+    rows = [
+        (n, [_given(c, k) for c, k in zip_longest(row, columns, fillvalue="")]) for n, row in lines
+    ]
     return _table(str(path), rows)
 
 
-def _given(cell: str) -> object:
-    """Give a number where a cell is one, None where it is empty, else its text."""
+def _given(cell: str, column: str) -> object:
+    """
+    Give a number where a column holds numbers, None where a cell is empty, else its text.
+
+    A sample number keeps its zeros: ``007`` is a name, not seven.
+    """
     text = cell.strip()
     if not text:
         return None
-    if text[0] in "+-.0123456789":
-        try:
-            return int(text) if text.lstrip("+-").isdigit() else float(text)
-        except ValueError:
-            return text
-    return float("nan") if text.lower() == "nan" else text
+    if column in NUMERIC and WHOLE.fullmatch(text):
+        return int(text)
+    if column == "value" and (DECIMAL.fullmatch(text) or text.lower() == "nan"):
+        return float(text)
+    return text
 
 
 def _workbook(path: Path, sheet: str) -> Table:

@@ -71,6 +71,23 @@ def test_csv_and_workbook_give_the_same_record(tmp_path: Path) -> None:
     assert record.true_to == at(2, 8)
 
 
+def test_a_sample_number_keeps_its_zeros(tmp_path: Path) -> None:
+    (record,) = read(sheet(written(tmp_path / "a.csv", ROW.replace("S1", "007"))))
+    assert record.document == "007"
+
+
+@pytest.mark.parametrize("cell", ["1_000", "inf", "1.2.3", '"1,234.5"', "12 %", "0x10"])
+def test_what_only_resembles_a_number_is_text(tmp_path: Path, cell: str) -> None:
+    said = refused(written(tmp_path / "a.csv", ROW.replace("0.84", cell)))
+    assert "value: text where a number is due" in said
+
+
+@pytest.mark.parametrize(("cell", "value"), [("84e-2", 0.84), (".84", 0.84), ("-1", -1), ("1.", 1)])
+def test_a_number_of_a_csv_file_is_read_as_written(tmp_path: Path, cell: str, value: float) -> None:
+    (record,) = read(sheet(written(tmp_path / "a.csv", ROW.replace("0.84", cell))))
+    assert record.value == value
+
+
 def test_a_cut_off_sheet_of_trucks_ladles_and_cells_speaks_plant_time(tmp_path: Path) -> None:
     path = tmp_path / "cutoff.csv"
     path.write_text(CUTOFF, encoding="utf-8")
