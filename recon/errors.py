@@ -251,8 +251,8 @@ class PlantUnreachableError(DataError):
     def __init__(self, source: str, reason: str, tries: int) -> None:
         self.reason = reason
         super().__init__(
-            f"{source}: did not answer after {tries} tries ({reason}). Check address, network and "
-            "account; nothing was read."
+            f"{source}: could not be read, {tries} {'try' if tries == 1 else 'tries'} ({reason}). "
+            "Check address, network and account; nothing was read."
         )
 
 

@@ -37,6 +37,9 @@ PASSING = ("locked", "busy", "disk i/o", "unable to open")
 SHUTTING = ("57P01", "57P02", "57P03", "53300", "53200", "53400")
 """PostgreSQL's states of a server that goes down, comes up, or is full (its manual, appendix A)."""
 
+REFUSING = ("authentication failed", "no password supplied", "does not exist", "pg_hba.conf")
+"""PostgreSQL's words for an account or database that waiting does not mend."""
+
 
 @dataclass(frozen=True, kw_only=True)
 class Connection:
@@ -100,7 +103,7 @@ class Connection:
         PlantQueryError
             It answered, and refused the query.
         """
-        for wait in (*WAITS, None):
+        for tries, wait in enumerate((*WAITS, None), start=1):
             try:
                 return work()
             except (DBAPIError, self.engine.dialect.loaded_dbapi.Error) as error:
@@ -108,8 +111,8 @@ class Connection:
                 if not self._passing(own):
                     raise PlantQueryError(self.name, query.path, said) from error
                 self.engine.dispose()
-                if wait is None:
-                    raise PlantUnreachableError(self.name, said, len(WAITS) + 1) from error
+                if wait is None or any(words in said for words in REFUSING):
+                    raise PlantUnreachableError(self.name, said, tries) from error
                 self.sleep(wait)
         raise AssertionError("unreachable: the last try returns or raises")
 

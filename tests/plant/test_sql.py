@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import sqlite3
 from collections.abc import Callable
 from datetime import UTC, datetime, timedelta
@@ -362,10 +363,29 @@ def test_a_server_that_stays_away_is_given_up_with_its_address_and_no_password(
     waited: list[float] = []
     plain = opened(f"postgresql://reader:secret@/plant?host={tmp_path}")
     away = Connection(name=plain.name, engine=plain.engine, sleep=waited.append)
-    with pytest.raises(PlantUnreachableError, match="after 6 tries") as caught:
+    with pytest.raises(PlantUnreachableError, match="could not be read, 6 tries") as caught:
         list(SqlPlant(away, queries()).records(RowKind.ASSAY, at(1), at(2)))
     assert "secret" not in str(caught.value)
     assert tuple(waited) == WAITS
+
+
+@pytest.mark.database
+def test_a_database_that_does_not_exist_is_not_waited_for(plant_server: str) -> None:
+    waited: list[float] = []
+    plain = opened(re.sub(r"/\w+\?", "/nowhere?", plant_server))
+    source = SqlPlant(
+        Connection(name=plain.name, engine=plain.engine, sleep=waited.append), queries()
+    )
+    with pytest.raises(PlantUnreachableError, match=r'1 try .*"nowhere" does not exist'):
+        list(source.records(RowKind.ASSAY, at(1), at(2)))
+    assert waited == []
+
+
+def test_a_file_that_is_no_database_is_said_so(tmp_path: Path) -> None:
+    (tmp_path / "plant.db").write_text("no database" * 100)
+    source = plant(f"sqlite:///{tmp_path / 'plant.db'}")
+    with pytest.raises(PlantQueryError, match="file is not a database"):
+        list(source.records(RowKind.ASSAY, at(1), at(2)))
 
 
 def test_a_locked_file_is_asked_again(tmp_path: Path) -> None:
