@@ -101,7 +101,7 @@ def _compute(inputs: PeriodInputs) -> PeriodResult:
         estimates=estimate_rows(days, answer),
         offsets=offset_rows(days, answer),
         findings=findings,
-        figures=figure_rows(month, answer),
+        figures=figure_rows(month, answer, tables.figures),
         cells=(*tables.cells, *statistic_cells(days, answer, suspicion.alarm, tests)),
         closing=tables.closing,
         leaves=tables.leaves,

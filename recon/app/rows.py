@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from collections import defaultdict
+from collections.abc import Sequence
 from datetime import date
 from typing import TYPE_CHECKING
 
@@ -75,8 +76,10 @@ def offset_rows(days: tuple[date, ...], answer: Answer) -> tuple[OffsetRow, ...]
     return tuple(sorted(rows, key=lambda row: (row.source, row.draw_from)))
 
 
-def figure_rows(month: IngestedMonth, answer: Answer) -> tuple[FigureRow, ...]:
-    """List declared figures of each day and of the month, each with its budget."""
+def figure_rows(
+    month: IngestedMonth, answer: Answer, unaccounted: Sequence[FigureValue] = ()
+) -> tuple[FigureRow, ...]:
+    """List fitted figures of days and month, and unaccounted as measured, each with its budget."""
     tags = {(m.measurement.name, m.measurement.period): m.tag for m in month.measured}
     rows = [
         FigureRow(
@@ -88,11 +91,12 @@ def figure_rows(month: IngestedMonth, answer: Answer) -> tuple[FigureRow, ...]:
             ),
             value=f.value,
             u=f.u,
-            basis="fitted" if f.determined else "",
+            basis=basis if f.determined else "",
             budget=_budget(f, tags),
             reason=f.reason,
         )
-        for f in answer.figures
+        for basis, figures in (("fitted", answer.figures), ("computed", unaccounted))
+        for f in figures
     ]
     return tuple(sorted(rows, key=lambda row: (row.name, row.period)))
 
