@@ -8,6 +8,9 @@ from __future__ import annotations
 import argparse
 import sys
 from pathlib import Path
+from tempfile import TemporaryDirectory
+
+from sqlalchemy.exc import SQLAlchemyError
 
 from recon.declare.site_file import read_site
 from recon.demo.faults import FAULTS
@@ -35,6 +38,13 @@ def main(arguments: list[str] | None = None) -> int:
     except (ReconError, ValueError, OSError) as error:
         sys.stderr.write(f"{error}\n")
         return 2
+    except SQLAlchemyError as error:
+        said = str(getattr(error, "orig", None) or error).strip().splitlines()[0]
+        sys.stderr.write(
+            f"{asked.plant}: cannot be written: {said}. An empty database is expected, with an "
+            "account that may create tables there; nothing was written.\n"
+        )
+        return 2
     sys.stdout.write(made)
     return 0
 
@@ -52,8 +62,13 @@ def _make(asked: argparse.Namespace) -> str:
         faults=asked.faults,
     )
     asked.out.mkdir(parents=True, exist_ok=True)
-    write_plant(simulation, asked.plant or f"sqlite:///{plant}")
-    write_truth(simulation, truth)
+    with TemporaryDirectory(dir=asked.out) as folder:  # a run cut short leaves no half a file
+        whole = Path(folder)
+        write_truth(simulation, whole / "truth.db")
+        write_plant(simulation, asked.plant or f"sqlite:///{whole / 'plant.db'}")
+        for path in (plant, truth):
+            if (whole / path.name).exists():
+                (whole / path.name).rename(path)
     readings = sum(len(s.at) for s in simulation.series)
     return (
         f"{len(simulation.truth.grid.days)} plant days, {readings:,} readings, "

@@ -88,6 +88,8 @@ def _fill(engine: Engine, simulation: Simulation, kind: str) -> None:
     types = SQLITE if kind == "sqlite" else POSTGRESQL
     insert = _insert if kind == "sqlite" else _copy
     with engine.begin() as connection:
+        if kind == "sqlite":  # its driver would leave the tables outside the transaction
+            connection.exec_driver_sql("BEGIN")
         _execute(connection, TABLES.format(**types))
         for series in simulation.series:
             insert(connection, "reading", _readings(series))

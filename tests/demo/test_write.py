@@ -131,6 +131,22 @@ def test_wrong_arguments_are_told_and_nothing_is_written(
     assert not list(tmp_path.iterdir())
 
 
+def test_a_database_that_is_not_empty_is_refused_and_nothing_is_left_behind(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    taken = tmp_path / "taken.db"
+    with closing(sqlite3.connect(taken)) as database:
+        database.execute("CREATE TABLE ticket (number TEXT)")
+    before = taken.read_bytes()
+    site = str(ROOT / "config" / "demo" / "site.toml")
+    out = tmp_path / "out"
+    asked = ["--out", str(out), "--site", site, "--months", "1", "--interval", "60"]
+    assert main([*asked, "--plant", f"sqlite:///{taken}"]) == 2
+    assert "table ticket already exists" in capsys.readouterr().err
+    assert not list(out.iterdir())
+    assert taken.read_bytes() == before
+
+
 def test_no_name_of_a_fault_and_no_true_value_is_in_the_plants_database(tmp_path: Path) -> None:
     simulation = hourly(faults="on", months=1)
     path = tmp_path / "plant.db"
