@@ -85,13 +85,16 @@ class Database:
     @contextmanager
     def reading(self) -> Iterator[Connection]:
         """Open one snapshot: whatever is read inside belongs together. Errors as above."""
-        with self._in_words(), self._reader.connect() as connection:
-            if not self.sqlite:
-                connection.execution_options(
-                    isolation_level="REPEATABLE READ", postgresql_readonly=True
-                )
-            with connection.begin():
-                yield connection
+        try:
+            with self._in_words(), self._reader.connect() as connection:
+                if not self.sqlite:
+                    connection.execution_options(
+                        isolation_level="REPEATABLE READ", postgresql_readonly=True
+                    )
+                with connection.begin():
+                    yield connection
+        except ValueError as error:  # stored text, days, times or JSON that cannot be read
+            raise DamagedBookError(self.shown, str(error)) from error
 
     def lock(self, connection: Connection, what: str) -> None:
         """Let only one transaction at a time do a named thing; ends with the transaction."""

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import re
-import subprocess
 import sys
 from collections.abc import Callable
 from datetime import timedelta
@@ -13,13 +12,13 @@ import pytest
 from sqlalchemy import Connection, Table, create_engine, text
 
 from recon.audit.chain import Head
+from recon.cli.main import main
 from recon.db.book import SqlBook
 from recon.db.tables import BOOK
 from recon.db.verify import CONSISTENT, PROVEN, Verified, verify
 from recon.errors import AuditError
 from tests.db.samples import SEEN, SITE, filled, inputs, proposal, published, pulled, record
 
-ROOT = Path(__file__).resolve().parents[2]
 COVERED = (
     "site_version",
     "source_query",
@@ -256,35 +255,42 @@ def test_a_chain_rewritten_whole_is_found_by_the_outside_head_only(
     assert "ends with entry 8" in only(verify(book_url, outside={SITE: ahead})).fault
 
 
-def recon(*arguments: str) -> subprocess.CompletedProcess[str]:
-    return subprocess.run(
-        [sys.executable, "-m", "recon", *arguments],
-        cwd=ROOT,
-        capture_output=True,
-        text=True,
-        check=False,
-    )
+Run = Callable[..., tuple[int, str, str]]
+
+
+@pytest.fixture
+def recon(monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]) -> Run:
+    """Run the command as a shell would; give status, output and complaints."""
+
+    def run(*arguments: str) -> tuple[int, str, str]:
+        monkeypatch.setattr(sys, "argv", ["recon", *arguments])
+        with pytest.raises(SystemExit) as ended:
+            main()
+        said = capsys.readouterr()
+        return int(ended.value.code or 0), said.out, said.err
+
+    return run
 
 
 def test_the_commands_make_a_book_verify_it_and_end_with_status_4_when_it_was_altered(
-    database_url: str,
+    database_url: str, recon: Run
 ) -> None:
     made = recon("database", "upgrade", "--book", database_url)
-    assert (made.returncode, made.stdout) == (0, "applied 0001_book\nThe book is up to date.\n")
-    assert "no site yet" in recon("verify", "--book", database_url).stdout
+    assert made == (0, "applied 0001_book\nThe book is up to date.\n", "")
+    assert "no site yet" in recon("verify", "--book", database_url)[1]
     book = SqlBook(database_url)
     two_runs(book)
     book.close()
-    good = recon("verify", "--book", database_url)
-    assert good.returncode == 0
-    assert CONSISTENT in good.stdout
-    head = re.search(r"Keep this head elsewhere: (\S+)", good.stdout)
+    status, good, _ = recon("verify", "--book", database_url)
+    assert status == 0
+    assert CONSISTENT in good
+    head = re.search(r"Keep this head elsewhere: (\S+)", good)
     assert head is not None
-    assert PROVEN in recon("verify", "--book", database_url, "--head", head[1]).stdout
-    wrong = recon("verify", "--book", database_url, "--head", "five:x:y")
-    assert (wrong.returncode, wrong.stdout) == (2, "")
+    assert PROVEN in recon("verify", "--book", database_url, "--head", head[1])[1]
+    status, said, complaint = recon("verify", "--book", database_url, "--head", "five:x:y")
+    assert (status, said) == (2, "")
+    assert "expected SITE:NUMBER:HASH" in complaint
     tampered(database_url, lambda c: edit(c, BOOK.tables["figure"], "value"), "figure")
-    bad = recon("verify", "--book", database_url)
-    assert bad.returncode == 4
-    assert "NOT WHAT WAS WRITTEN: site five, run 2, table figure" in bad.stdout
-    assert "Traceback" not in bad.stderr
+    status, bad, _ = recon("verify", "--book", database_url)
+    assert status == 4
+    assert "NOT WHAT WAS WRITTEN: site five, run 2, table figure" in bad
