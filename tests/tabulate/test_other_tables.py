@@ -235,3 +235,33 @@ def test_printed_and_unrounded_unaccounted_agree_where_something_is_discarded() 
         table = "site-balance" if row == "Cu" else "section-balance"
         exact = value(tables, "unaccounted-bridge", f"{row} 999 stated", "unaccounted")
         assert exact == pytest.approx(value(tables, table, row, "unaccounted"), abs=0.2)
+
+
+def test_a_component_that_a_node_passes_unbalanced_is_stated_without_a_test() -> None:
+    paper = mill_month()
+    paper.site = replace(
+        paper.site,
+        nodes=tuple(
+            replace(n, conserves=("mass",)) if n.name == "MILL" else n for n in paper.site.nodes
+        ),
+    )
+    tables = paper.tables()
+    assert value(tables, "site-balance", "Cu", "unaccounted") == pytest.approx(-0.444)
+    z = cell(tables, "site-balance", "Cu", "z")
+    assert (z.value, z.reason) == (None, "Cu is not balanced at MILL")
+    assert "unmeasured is part of unaccounted" in (
+        cell(tables, "site-balance", "Cu", "note").text or ""
+    )
+    assert "unaccounted-large" not in {f.code for f in tables.findings}
+
+
+def test_dry_mass_is_stated_only_where_every_node_conserves_it() -> None:
+    paper = mill_month()
+    paper.site = replace(
+        paper.site,
+        nodes=tuple(
+            replace(n, conserves=("Cu",)) if n.name == "MILL" else n for n in paper.site.nodes
+        ),
+    )
+    rows = {c.row for c in paper.tables().cells if c.table.endswith("-balance")}
+    assert rows == {"Cu", "yard mass", "yard Cu", "concentrator Cu"}
