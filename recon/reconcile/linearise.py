@@ -85,7 +85,7 @@ class Local:
     standing: NDArray[np.bool_]
 
 
-def local(state: State, point: Point, scale: Vector) -> Local:
+def local(state: State, point: Point, scale: Vector, *, alike: bool = True) -> Local:
     """
     Linearise a problem.
 
@@ -95,6 +95,8 @@ def local(state: State, point: Point, scale: Vector) -> Local:
     point : Point
     scale : ndarray
         Typical size of each unknown, shape (n,) [t or -], all positive.
+    alike : bool
+        Whether common compositions are stated; the convex start leaves them out.
 
     Returns
     -------
@@ -106,7 +108,7 @@ def local(state: State, point: Point, scale: Vector) -> Local:
     data, misfit, standing = _data_rows(state, point, scale)
     ties = _standing_ties(state.fit, standing)
     equal = [(state.equalities @ columns, state.right - state.equalities @ x, state.equality_names)]
-    if len(state.alike):
+    if alike and len(state.alike):
         equal.append(_alike_rows(state, x, scale))
     if ties:
         rows = sparse.csr_array(sparse.vstack([row for row, _ in ties]))

@@ -26,8 +26,10 @@ if TYPE_CHECKING:
 
     Vector = NDArray[np.float64]
 
-PULL = 1e-3
-"""Weight of the pull towards the first guess in the convex start, per typical size."""
+PULL = 1.0
+"""Weight of the pull towards the first guess in the convex start, per typical size: as if every
+unknown were read once, to 100 %. Errors of assays would otherwise draw small unmeasured flows to
+nothing."""
 SMALLEST = 1e-2
 """Smallest size of an unknown, as a share of the typical size of its quantity."""
 PASSES = 3
@@ -175,14 +177,19 @@ def convex_start(state: State, solve: Callable[[Local], Step]) -> tuple[Point, V
     reference = np.maximum(np.abs(state.fit.denominators(x)), least)
     beta = np.zeros(state.draws)
     floor = SMALLEST * size
-    for _ in range(PASSES if state.fit.ratio.any() or len(state.alike) else 1):
-        around = _convex_local(state, Point(x=x, beta=beta), size, reference)
+    guess = x
+    for _ in range(PASSES if state.fit.ratio.any() else 1):
+        around = _convex_local(state, Point(x=x, beta=beta), guess, size, reference)
         move = solve(around).move
         x = x + size * move[: len(x)]
         beta = beta + move[len(x) :]
         below = state.fit.denominators(x)
         reference = np.maximum(np.abs(below), LOWEST * least)
     x = _away_from_zero(state, x, size)
+    _fill_compositions(state, x)
+    if len(state.alike):
+        amount, share, common = state.alike.T
+        x[amount] = x[share] * x[common]
     return Point(x=x, beta=beta), np.maximum(np.abs(x), floor)
 
 
@@ -194,10 +201,12 @@ def _away_from_zero(state: State, x: Vector, size: Vector) -> Vector:
     return lifted
 
 
-def _convex_local(state: State, point: Point, size: Vector, reference: Vector) -> Local:
+def _convex_local(
+    state: State, point: Point, guess: Vector, size: Vector, reference: Vector
+) -> Local:
     fit, x, beta = state.fit, point.x, point.beta
     n, g = len(x), state.draws
-    exact = local(state, point, size)
+    exact = local(state, point, size, alike=False)
     shares = np.maximum(np.asarray(fit.gather.sum(axis=1)).ravel(), 1e-12)
     target = np.where(fit.ratio, (fit.gather.T @ (fit.value / shares)), 0.0)
     of = sparse.diags_array(1 / reference) @ (fit.of - sparse.diags_array(target) @ fit.over)
@@ -211,7 +220,9 @@ def _convex_local(state: State, point: Point, size: Vector, reference: Vector) -
     rows = sparse.hstack([weight @ slope @ sparse.diags_array(size), weight @ drift])
     return Local(
         data=sparse.csr_array(sparse.vstack([rows, pull, prior])),
-        misfit=np.concatenate([(aim - slope @ x - drift @ beta) / fit.u, np.zeros(n), -beta]),
+        misfit=np.concatenate(
+            [(aim - slope @ x - drift @ beta) / fit.u, PULL * (guess - x) / size, -beta]
+        ),
         equal=exact.equal,
         gap=exact.gap,
         bound=exact.bound,

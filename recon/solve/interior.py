@@ -7,7 +7,7 @@ degenerate the answer itself; the acceptance checks judge it as they judge any o
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -15,7 +15,7 @@ from scipy import sparse
 
 from recon.errors import NotAcceptedError
 from recon.reconcile.solver import Step
-from recon.solve.kkt import Kkt, Symbolic
+from recon.solve.kkt import HEAVY, Kkt, Symbolic
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -48,7 +48,7 @@ def interior(local: Local) -> tuple[Step, NDArray[np.bool_]]:
     NotAcceptedError
         The search did not end; the bounds may contradict the equalities.
     """
-    view = _View.of(local)
+    view = _View.of(_lifted(local))
     now = view.start()
     symbolic = Symbolic()
     best, reached, stalled = now, np.inf, 0
@@ -58,10 +58,45 @@ def interior(local: Local) -> tuple[Step, NDArray[np.bool_]]:
         if left.worst < reached:
             best, reached, stalled = now, left.worst, 0
         if reached < SMALL or (stalled > PATIENCE and reached < ENOUGH):
-            step = Step(move=best.d, equal_force=best.force, bound_force=best.push)
+            step = Step(
+                move=best.d[: local.data.shape[1]],
+                equal_force=best.force[: len(local.gap)],
+                bound_force=best.push,
+            )
             return step, np.asarray(best.push > best.slack)
         now = view.advance(now, left, symbolic)
     raise NotAcceptedError(["sparse direct: the bounds and the equalities do not come together."])
+
+
+def _lifted(local: Local) -> Local:
+    """
+    Give the misfits of very steep data rows unknowns of their own.
+
+    Each such row, scaled to length one, becomes an equality between the old unknowns and its own
+    misfit: slopes are then never differences of products that dwarf them.
+    """
+    steep = np.sqrt(np.asarray(local.data.multiply(local.data).sum(axis=1)).ravel())
+    heavy = steep > HEAVY
+    if not heavy.any():
+        return local
+    more = int(heavy.sum())
+    tau = sparse.diags_array(1 / steep[heavy])
+    rows, wide = local.equal.shape
+    return replace(
+        local,
+        data=sparse.csr_array(sparse.block_diag([local.data[~heavy], sparse.eye_array(more)])),
+        misfit=np.concatenate([local.misfit[~heavy], np.zeros(more)]),
+        equal=sparse.csr_array(
+            sparse.block_array([[local.equal, None], [tau @ local.data[heavy], tau]])
+            if rows
+            else sparse.hstack([tau @ local.data[heavy], tau])
+        ),
+        gap=np.concatenate([local.gap, tau @ local.misfit[heavy]]),
+        bound=sparse.csr_array(
+            sparse.hstack([local.bound, sparse.csr_array((local.bound.shape[0], more))])
+        ),
+        scale=np.concatenate([local.scale, np.ones(wide + more - len(local.scale))]),
+    )
 
 
 @dataclass(frozen=True, kw_only=True)

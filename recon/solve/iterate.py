@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import time
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 import numpy as np
+from scipy import sparse
 
-from recon.errors import NotAcceptedError
+from recon.errors import NotAcceptedError, SolveError
 from recon.reconcile.linearise import Point, local, standing_parts
 from recon.reconcile.solver import Solution
 from recon.reconcile.start import convex_start
@@ -26,6 +28,12 @@ if TYPE_CHECKING:
 MOST_PASSES = 80
 STILL = 1e-10
 """The search ends when no reading's fitted value moves by more than this many of its u."""
+FIRST_DAMPING, LEAST_DAMPING = 1.0, 1e-12
+"""Weight of the pull to where the search is, per typical size, at first and at last."""
+SETTLING = 1e-3
+"""Once readings move by less than this many of their u the pull only fades."""
+PARTS = (1.0, 0.3, 0.05)
+"""Parts of what is open that a pass tries to close."""
 KEEP = 0.05
 """One step may take a denominator down to this share of itself, so no ratio is lost at once."""
 
@@ -51,11 +59,12 @@ def iterate(state: State, solve: Callable[[Local], Step], *, engine: str) -> Sol
     """
     began = time.perf_counter()
     point, size = convex_start(state, solve)
+    damping = FIRST_DAMPING
     for passes in range(1, MOST_PASSES + 1):
         around = local(state, point, size)
-        step = solve(around)
+        step = _step(around, damping, solve)
         whole = _longest(state, point.x, size, size * step.move[: len(point.x)]) == 1.0
-        if whole and _at_rest(around, step):
+        if whole and damping <= LEAST_DAMPING and _at_rest(around, step):
             return Solution(
                 point=point,
                 local=around,
@@ -66,8 +75,39 @@ def iterate(state: State, solve: Callable[[Local], Step], *, engine: str) -> Sol
                 iterations=passes,
                 seconds=time.perf_counter() - began,
             )
-        point = _advance(state, point, size, around, step, engine)
+        moved = float(np.max(np.abs(around.data @ step.move), initial=0.0))
+        point, length = _advance(state, point, size, around, step, engine)
+        if length > 0.5 or moved < SETTLING:
+            damping = max(min(0.1 * damping, moved**2), LEAST_DAMPING)
+        elif length < 0.2:
+            damping = min(10.0 * damping, FIRST_DAMPING)
     raise NotAcceptedError([f"{engine} did not come to rest in {MOST_PASSES} passes."])
+
+
+def _step(around: Local, damping: float, solve: Callable[[Local], Step]) -> Step:
+    """
+    Solve a local problem with a pull to where it is, which fades as the search settles.
+
+    Directions that the data hardly see would otherwise take steps of many times their size. Where
+    the linearised equalities and the bounds cannot be met at once, only part of what is open is
+    closed in one pass.
+    """
+    wide = around.data.shape[1]
+    pulled = replace(
+        around,
+        data=sparse.csr_array(
+            sparse.vstack([around.data, np.sqrt(damping) * sparse.eye_array(wide)])
+        ),
+        misfit=np.concatenate([around.misfit, np.zeros(wide)]),
+    )
+    failed: SolveError | None = None
+    for part in PARTS:
+        try:
+            return solve(replace(pulled, gap=part * around.gap))
+        except SolveError as error:
+            failed = failed or error
+    assert failed is not None
+    raise failed
 
 
 def _at_rest(around: Local, step: Step) -> bool:
@@ -79,7 +119,7 @@ def _at_rest(around: Local, step: Step) -> bool:
 
 def _advance(
     state: State, point: Point, size: Vector, around: Local, step: Step, engine: str
-) -> Point:
+) -> tuple[Point, float]:
     """Take the largest of the halved steps that lowers misfit and open equalities together."""
     n = len(point.x)
     move_x = size * step.move[:n]
@@ -91,7 +131,7 @@ def _advance(
         trial = Point(x=point.x + length * move_x, beta=point.beta + length * step.move[n:])
         after = _merit(local(state, trial, size), price)
         if after <= before - 1e-4 * length * promised + 1e-13 * abs(before):
-            return trial
+            return trial, length
         length *= 0.5
     raise NotAcceptedError([f"{engine} found no step that lowers the misfit."])
 
