@@ -31,7 +31,8 @@ STILL = 1e-10
 FIRST_DAMPING, LEAST_DAMPING = 1.0, 1e-12
 """Weight of the pull to where the search is, per typical size, at first and at last."""
 SETTLING = 1e-3
-"""Once readings move by less than this many of their u the pull only fades."""
+"""Once readings move by less than this many of their u the pull only fades, and sizes are of where
+the search is."""
 PARTS = (1.0, 0.3, 0.05)
 """Parts of what is open that a pass tries to close."""
 KEEP = 0.05
@@ -77,6 +78,8 @@ def iterate(state: State, solve: Callable[[Local], Step], *, engine: str) -> Sol
             )
         moved = float(np.max(np.abs(around.data @ step.move), initial=0.0))
         point, length = _advance(state, point, size, around, step, engine)
+        if moved < SETTLING:
+            size = np.maximum(size, np.abs(point.x))
         if length > 0.5 or moved < SETTLING:
             damping = max(min(0.1 * damping, moved**2), LEAST_DAMPING)
         elif length < 0.2:

@@ -29,6 +29,8 @@ HARDER = (1.0, 10.0, 100.0, 1000.0)
 HEAVY = 3e3
 """A standardised data row steeper than this, per typical size, is treated as a soft equality."""
 REFINE = 40
+ROUNDS, SAME = 8, 1e-9
+"""Many columns are refined so often at most, or until a round changes them by no more."""
 STRICT = 1e3
 """How much more an open equality weighs than a slope, while refining."""
 RESTS = 0.5
@@ -188,7 +190,7 @@ class Kkt:
             d, v = d + change[:wide], v + change[wide:]
         return best[0], -best[1][: len(gap)]
 
-    def columns(self, top: Vector, gap: Vector | None = None, *, rounds: int = 2) -> Vector:
+    def columns(self, top: Vector, gap: Vector | None = None) -> Vector:
         """
         Solve for many right sides at once, refined.
 
@@ -198,8 +200,6 @@ class Kkt:
             Slopes, shape (N, k).
         gap : ndarray, optional
             Right sides of the equalities, shape (p, k).
-        rounds : int
-            Rounds of refinement.
 
         Returns
         -------
@@ -212,8 +212,11 @@ class Kkt:
         if gap is not None:
             right[wide : wide + len(gap)] = gap
         answer = self._solve(right)
-        for _ in range(rounds):
-            answer = answer + self._solve(right - self._apply(answer))
+        for _ in range(ROUNDS):
+            change = self._solve(right - self._apply(answer))
+            answer = answer + change
+            if np.abs(change).max(initial=0.0) <= SAME * np.abs(answer).max(initial=0.0):
+                break
         return answer
 
     def unseen(self, count: int, rounds: int, seed: int) -> Vector:

@@ -185,7 +185,7 @@ class SparseSensitivities:
             asked = used[first : first + BLOCK]
             unit = np.zeros((wide, len(asked)))
             unit[asked, np.arange(len(asked))] = 1.0
-            columns = self.kkt.columns(unit, rounds=1)[:wide]
+            columns = self.kkt.columns(unit)[:wide]
             total += (forms[:, asked].tocoo().multiply(forms @ columns)).sum(axis=1)
         return np.maximum(total, 0.0)
 
