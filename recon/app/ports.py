@@ -240,13 +240,20 @@ class Book(Protocol):
         ...
 
     def arrivals(
-        self, site: str, *, since: datetime, until: datetime, after: datetime
+        self,
+        site: str,
+        *,
+        since: datetime,
+        until: datetime,
+        after: datetime,
+        by: datetime | None = None,
     ) -> tuple[datetime, datetime] | None:
         """
         Give the earliest and latest time at which rows of a span became known after a cut.
 
         Rows are tag days and records whose span touches ``[since, until)``; known is the later of
-        a row's own known-at and when it was first seen. None where nothing came.
+        a row's own known-at and when it was first seen, ``by`` the present where that is given.
+        None where nothing came.
         """
         ...
 

@@ -9,6 +9,8 @@ import typer
 from recon import __version__
 from recon.cli.book import database, verify
 from recon.cli.check import check
+from recon.cli.run import run
+from recon.cli.serve import serve
 from recon.cli.solve import solve
 from recon.errors import ReconError
 
@@ -20,6 +22,8 @@ app = typer.Typer(
     add_completion=False,
 )
 app.command("check")(check)
+app.command("run")(run)
+app.command("serve")(serve)
 app.command("solve")(solve)
 app.command("verify")(verify)
 app.add_typer(database, name="database")

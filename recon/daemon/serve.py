@@ -5,6 +5,7 @@ from __future__ import annotations
 import signal
 import threading
 from collections.abc import Callable
+from contextlib import nullcontext
 from datetime import UTC, datetime
 from types import FrameType
 from typing import TYPE_CHECKING, Protocol
@@ -12,11 +13,13 @@ from typing import TYPE_CHECKING, Protocol
 import structlog
 
 from recon.daemon.health import HealthServer
+from recon.daemon.lock import held
 from recon.daemon.schedule import MOST_MISSED, Ticker
+from recon.daemon.status import Status
 from recon.errors import DONE, AuditError, ReconError
+from recon.wiring import book_file, workplace
 
 if TYPE_CHECKING:
-    from recon.daemon.status import Status
     from recon.settings import Settings
 
 STALLED = 70
@@ -26,10 +29,36 @@ LONGEST_PAUSE = 20
 log = structlog.get_logger()
 
 
+def serve(settings: Settings) -> int:
+    """
+    Serve one site until a signal ends it.
+
+    Returns
+    -------
+    int
+        Exit status, see ``Service.run``.
+
+    Raises
+    ------
+    AlreadyServedError
+        Another process serves the same embedded book.
+    ReconError
+        Settings, site file or book cannot be used.
+    """
+    now = datetime.now(UTC)
+    status = Status(started_at=now)
+    file = book_file(settings)
+    with (
+        held(file, since=now) if file is not None else nullcontext(),
+        workplace(settings, watcher=status, actor="recon serve") as place,
+    ):
+        return Service(settings=settings, worker=place.rounds, status=status).run()
+
+
 class Worker(Protocol):
     """What the service does at a tick."""
 
-    def look(self, stopping: Callable[[], bool]) -> None:
+    def look(self, stopping: Callable[[], bool]) -> object:
         """Pull what is new and run what is due; stops between periods when asked to."""
         ...
 

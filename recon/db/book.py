@@ -208,11 +208,17 @@ class SqlBook:
         publish.confirm(self.database, site, standing, knowledge_cut=knowledge_cut, at=at)
 
     def arrivals(
-        self, site: str, *, since: datetime, until: datetime, after: datetime
+        self,
+        site: str,
+        *,
+        since: datetime,
+        until: datetime,
+        after: datetime,
+        by: datetime | None = None,
     ) -> tuple[datetime, datetime] | None:
         """Give the earliest and latest time at which rows of a span became known after a cut."""
         with self.database.reading() as connection:
-            return material.arrivals(connection, site, since=since, until=until, after=after)
+            return material.arrivals(connection, site, since=since, until=until, after=after, by=by)
 
     def runs(self, site: str, month: date | None = None) -> tuple[RunHead, ...]:
         """List runs in the order they were published."""

@@ -51,7 +51,13 @@ def material(
 
 
 def arrivals(
-    connection: Connection, site: str, *, since: datetime, until: datetime, after: datetime
+    connection: Connection,
+    site: str,
+    *,
+    since: datetime,
+    until: datetime,
+    after: datetime,
+    by: datetime | None = None,
 ) -> tuple[datetime, datetime] | None:
     """Give the earliest and latest time at which rows of a span became known after a cut."""
     first_day, last_day = since.date() - timedelta(days=1), until.date() + timedelta(days=1)
@@ -71,6 +77,8 @@ def arrivals(
             table.c.site == site, where, (seen > after) | (known > after)
         )
         found += [max(row[0], row[1]) for row in connection.execute(asked)]
+    if by is not None:
+        found = [known for known in found if known <= by]
     return (min(found), max(found)) if found else None
 
 
