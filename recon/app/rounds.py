@@ -113,7 +113,7 @@ class Rounds:
         ConfigError
             The book has no usable version of the site.
         """
-        sites = self._sites()
+        sites = self.sites()
         self._pull(sites, stopping)
         due = self.due(sites)
         self.watcher.found_due(len(due))
@@ -128,7 +128,7 @@ class Rounds:
 
     def due(self, sites: tuple[Site, ...] | None = None) -> tuple[Due, ...]:
         """Find what is due now; see ``recon.app.due``."""
-        sites = sites or self._sites()
+        sites = sites or self.sites()
         now, book, site = self.runner.clock(), self.runner.book, self.runner.site
         sources = self._sources(sites)
         closed = frozenset(self.closed())
@@ -178,7 +178,7 @@ class Rounds:
         DataError
             No such day has ended, or the month is closed.
         """
-        sites = self._sites()
+        sites = self.sites()
         calendar = self._sources(sites).calendar
         ended = calendar.day_of(self.runner.clock()) - timedelta(days=1)
         last = through or min(month_days(month)[-1], ended)
@@ -207,7 +207,8 @@ class Rounds:
         """Remember the claim held now."""
         self._claim = claim
 
-    def _sites(self) -> tuple[Site, ...]:
+    def sites(self) -> tuple[Site, ...]:
+        """Versions of the site, rising by ``valid_from``."""
         versions = self.runner.book.site_versions(self.runner.site)
         if not versions:
             raise ConfigError(

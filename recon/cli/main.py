@@ -9,6 +9,7 @@ import typer
 from recon import __version__
 from recon.cli.book import database, verify
 from recon.cli.check import check
+from recon.cli.demo import demo
 from recon.cli.run import run
 from recon.cli.serve import serve
 from recon.cli.solve import solve
@@ -22,6 +23,7 @@ app = typer.Typer(
     add_completion=False,
 )
 app.command("check")(check)
+app.command("demo")(demo)
 app.command("run")(run)
 app.command("serve")(serve)
 app.command("solve")(solve)

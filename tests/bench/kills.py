@@ -1,7 +1,7 @@
 """Kills workers at random moments and counts what was lost, doubled or left half.
 
 Two workers publish the same periods of the five-node site's book while one of them is killed, with
-SIGKILL, every two to four seconds. The fit is replaced by a count and a pause, so that kills fall on
+SIGKILL, every few seconds. The fit is replaced by a count and a pause, so that kills fall on
 claims and publication; what is published has twenty cells a run.
 """
 
