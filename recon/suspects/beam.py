@@ -11,6 +11,7 @@ Only ``N = G'z`` and ``M = G'G`` are needed, so evidence gathered over days serv
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -24,9 +25,9 @@ if TYPE_CHECKING:
 
     Vector = NDArray[np.float64]
 
-WIDTH = 24
+WIDTH = 20
 """Sets of each size that are grown further."""
-VISITED = 64
+VISITED = 48
 """Sets of each size that are kept as alternatives."""
 DEPTH = 8
 FAR = 10.0
@@ -64,6 +65,22 @@ class Choices:
             return self.single[choice : choice + 1]
         return self.blocks[choice - len(self.single)]
 
+    @cached_property
+    def directions(self) -> list[tuple[int, ...]]:
+        """Directions each choice is free in."""
+        return [
+            tuple(self.column[self.copies(choice)].tolist()) for choice in range(len(self.owner))
+        ]
+
+    @cached_property
+    def overlap(self) -> NDArray[np.bool_]:
+        """Which choices share a direction, shape (s + b, s + b)."""
+        touched = np.zeros((int(self.owner.max(initial=-1)) + 1, len(self.scale) // 2))
+        for owner, columns in zip(self.owner.tolist(), self.directions, strict=True):
+            touched[owner, list(columns)] = 1.0
+        share = touched @ touched.T > 0
+        return np.asarray(share[self.owner][:, self.owner])
+
 
 def choices_of(candidates: Sequence[Candidate], columns: Sequence[Column]) -> Choices:
     """Lay out every candidate at both of its plausible sizes."""
@@ -72,12 +89,12 @@ def choices_of(candidates: Sequence[Candidate], columns: Sequence[Column]) -> Ch
     singles: list[tuple[int, int]] = []
     blocks: list[tuple[int, NDArray[np.intp]]] = []
     for owner, candidate in enumerate(candidates):
-        rows = np.array(candidate.columns, dtype=np.intp)
-        for size in (0, 1):
+        rows = candidate.columns
+        for size in (0, count):
             if len(rows) == 1:
-                singles.append((owner, int(rows[0]) + size * count))
+                singles.append((owner, rows[0] + size))
             else:
-                blocks.append((owner, rows + size * count))
+                blocks.append((owner, np.array(rows, dtype=np.intp) + size))
     return Choices(
         column=np.concatenate([np.arange(count), np.arange(count)]).astype(np.intp),
         scale=np.concatenate([slabs[:, 0], slabs[:, 1]]),
@@ -105,10 +122,8 @@ class Evidence:
 
 
 def search(
-    evidence: Evidence,
-    choices: Choices,
+    gram: Gram,
     log_odds: Vector,
-    label: NDArray[np.intp],
     *,
     width: int = WIDTH,
     visited: int = VISITED,
@@ -119,12 +134,9 @@ def search(
 
     Parameters
     ----------
-    evidence : Evidence
-    choices : Choices
+    gram : Gram
     log_odds : ndarray
         Prior log odds of each choice, shape (s + b,).
-    label : ndarray
-        Class of each choice; a set holds at most one of each, shape (s + b,).
     width, visited, depth : int
 
     Returns
@@ -133,16 +145,12 @@ def search(
         Log posterior weight of every set that was kept, relative to the empty set, whose weight
         is 0; sets are rising tuples of choices.
     """
-    c = choices.scale * evidence.N[choices.column]
-    gram = _Gram(evidence.M, choices)
-    gram.clash |= label[:, None] == label[None, :]
-    beam = _Beam.start(c, gram.diagonal)
+    beam = _Beam.start(gram)
     found: dict[tuple[int, ...], float] = {(): 0.0}
     best = 0.0
     for _ in range(depth):
-        totals = beam.score[:, None] + _gains(beam, gram, choices) + log_odds
-        for row, members in enumerate(beam.sets):
-            totals[row, gram.clash[list(members)].any(axis=0)] = -np.inf
+        totals = beam.score[:, None] + _gains(beam, gram) + log_odds
+        totals[_taken(beam, gram)] = -np.inf
         children = _best(totals, beam.sets, visited)
         if not children:
             break
@@ -151,32 +159,56 @@ def search(
         best = max(best, top)
         if top < best - FAR:
             break
-        beam = beam.grow(children[:width], choices, gram)
+        beam = beam.grow(children[:width], gram)
     return found
 
 
-class _Gram:
-    """``K = H'H + I``, whole, its diagonal blocks, and which choices share a direction."""
+def replacements(gram: Gram, others: Sequence[int]) -> Vector:
+    """Rise of the log evidence by each choice, given that others are free already; (s + b,)."""
+    beam = _Beam.start(gram)
+    if others:
+        rows = np.concatenate([gram.choices.copies(choice) for choice in others])
+        root = np.linalg.cholesky(gram.K[rows][:, rows])
+        used = np.linalg.solve(root, gram.K[rows])
+        beam = _Beam(
+            sets=[tuple(others)],
+            score=beam.score,
+            c=beam.c - np.linalg.solve(root, gram.c[rows]) @ used,
+            diagonal=beam.diagonal - np.sum(used**2, axis=0),
+            used=used[None, :, :],
+        )
+    return np.asarray(_gains(beam, gram)[0])
 
-    def __init__(self, M: Vector, choices: Choices) -> None:
+
+class Gram:
+    """
+    ``K = H'H + I`` and ``c = H'z``, K's diagonal blocks, and which choices exclude one another.
+
+    Parameters
+    ----------
+    evidence : Evidence
+    choices : Choices
+    label : ndarray
+        Class of each choice, shape (s + b,): a set holds at most one of each class, and no two
+        that share a direction.
+    """
+
+    def __init__(self, evidence: Evidence, choices: Choices, label: NDArray[np.intp]) -> None:
         h, col = choices.scale, choices.column
-        self.K = M[np.ix_(col, col)] * h[:, None] * h[None, :]
+        self.choices = choices
+        self.c = h * evidence.N[col]
+        self.K = evidence.M[col][:, col] * h[:, None] * h[None, :]
         self.K[np.diag_indices_from(self.K)] += 1.0
         self.diagonal = np.diag(self.K).copy()
         widths = [len(b) for b in choices.blocks]
-        most = max(widths, default=0)
-        self.padded = np.zeros((len(widths), most), dtype=np.intp)
-        self.real = np.zeros((len(widths), most), dtype=np.bool_)
+        self.padded = np.zeros((len(widths), max(widths, default=0)), dtype=np.intp)
+        self.real = np.zeros(self.padded.shape, dtype=np.bool_)
         for row, block in enumerate(choices.blocks):
             self.padded[row, : len(block)] = block
             self.real[row, : len(block)] = True
         inner = self.K[self.padded[:, :, None], self.padded[:, None, :]]
-        both = self.real[:, :, None] & self.real[:, None, :]
-        self.inner = np.where(both, inner, 0.0)
-        touched = np.zeros((len(choices.owner), M.shape[0]))
-        for choice in range(len(choices.owner)):
-            touched[choice, col[choices.copies(choice)]] = 1.0
-        self.clash = touched @ touched.T > 0
+        self.inner = np.where(self.real[:, :, None] & self.real[:, None, :], inner, 0.0)
+        self.clash = choices.overlap | (label[:, None] == label[None, :])
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -194,23 +226,18 @@ class _Beam:
     used: Vector
 
     @classmethod
-    def start(cls, c: Vector, diagonal: Vector) -> _Beam:
+    def start(cls, gram: Gram) -> _Beam:
         return cls(
             sets=[()],
             score=np.zeros(1),
-            c=c[None, :],
-            diagonal=diagonal[None, :],
-            used=np.zeros((1, 0, len(c))),
+            c=gram.c[None, :],
+            diagonal=gram.diagonal[None, :],
+            used=np.zeros((1, 0, len(gram.c))),
         )
 
-    def grow(
-        self,
-        children: list[tuple[tuple[int, ...], float, int, int]],
-        choices: Choices,
-        gram: _Gram,
-    ) -> _Beam:
+    def grow(self, children: list[tuple[tuple[int, ...], float, int, int]], gram: Gram) -> _Beam:
         parents = np.array([parent for _, _, parent, _ in children], dtype=np.intp)
-        copies = [choices.copies(choice) for _, _, _, choice in children]
+        copies = [gram.choices.copies(choice) for _, _, _, choice in children]
         c, diagonal, used = self.c[parents], self.diagonal[parents], self.used[parents]
         for step in range(max(len(rows) for rows in copies)):
             live = np.array([step < len(rows) for rows in copies], dtype=np.bool_)
@@ -231,15 +258,22 @@ class _Beam:
         )
 
 
-def _gains(beam: _Beam, gram: _Gram, choices: Choices) -> Vector:
+def _taken(beam: _Beam, gram: Gram) -> NDArray[np.bool_]:
+    """Which choices each set excludes, shape (sets, s + b)."""
+    if not beam.sets[0]:
+        return np.zeros((1, gram.clash.shape[0]), dtype=np.bool_)
+    return np.asarray(gram.clash[np.array(beam.sets, dtype=np.intp)].any(axis=1))
+
+
+def _gains(beam: _Beam, gram: Gram) -> Vector:
     """Rise of the log evidence by each choice given each set, shape (sets, s + b)."""
+    choices = gram.choices
     c, d = beam.c[:, choices.single], np.maximum(beam.diagonal[:, choices.single], 1.0)
     single = c**2 / (2 * d) - np.log(d) / 2
     if not choices.blocks:
         return np.asarray(single)
     rows = gram.padded
-    blocks = gram.clash[:, len(choices.single) :]
-    free = np.array([~np.any(blocks[list(m)], axis=0) for m in beam.sets])
+    free = ~_taken(beam, gram)[:, len(choices.single) :]
     real = gram.real[None, :, :] & free[:, :, None]
     left = np.broadcast_to(gram.inner, (len(beam.sets), *gram.inner.shape))
     if beam.used.shape[1]:
@@ -273,13 +307,3 @@ def _best(
         if members not in result:
             result[members] = (members, score, parent, choice)
     return list(result.values())
-
-
-def replacements(evidence: Evidence, choices: Choices, others: Sequence[int]) -> Vector:
-    """Rise of the log evidence by each choice, given that others are free already; (s + b,)."""
-    c = choices.scale * evidence.N[choices.column]
-    gram = _Gram(evidence.M, choices)
-    beam = _Beam.start(c, gram.diagonal)
-    for choice in others:
-        beam = beam.grow([((*beam.sets[0], choice), 0.0, 0, choice)], choices, gram)
-    return np.asarray(_gains(beam, gram, choices)[0])

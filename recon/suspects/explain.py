@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from recon.suspects.beam import Choices, Evidence, choices_of, replacements, search
+from recon.suspects.beam import Choices, Evidence, Gram, choices_of, replacements, search
 from recon.suspects.signatures import NEAR
 
 if TYPE_CHECKING:
@@ -125,7 +125,8 @@ def explain(
         its probability as it is.
     """
     choices, label = setting.choices, setting.label
-    found = search(evidence, choices, log_odds, label)
+    gram = Gram(evidence, choices, label)
+    found = search(gram, log_odds)
     merged = _merge(found, label)
     ranked = sorted(merged.values(), key=lambda v: (-v[0], v[1][0][1]))
     bounds = _Bounds(evidence, setting)
@@ -147,9 +148,10 @@ def explain(
     top = kept[0][0]
     whole = sum(math.exp(total - top) for total, _ in kept)
     empty = sum(math.exp(t - top) for t, sets in kept if not sets[0][1]) / whole
+    known = label.tolist()
     pip: dict[int, float] = {}
     for total, sets in kept:
-        for one in {int(label[i]) for i in sets[0][1]}:
+        for one in [known[i] for i in sets[0][1]]:
             pip[one] = pip.get(one, 0.0) + math.exp(total - top) / whole
     columns = [int(choices.column[k]) for i in best for k in choices.copies(i)]
     sizes, spread, explained = free(evidence, columns)
@@ -163,7 +165,7 @@ def explain(
             Blamed(
                 candidate=int(choices.owner[i]),
                 probability=pip[int(label[i])],
-                group=_group(evidence, setting, log_odds, i, [k for k in best if k != i]),
+                group=_group(gram, evidence, setting, log_odds, i, [k for k in best if k != i]),
                 sizes=sizes[here],
                 spread=spread[here],
             )
@@ -242,27 +244,28 @@ class _Bounds:
         self.known: dict[tuple[int, ...], bool] = {(): True}
 
     def hold(self, members: tuple[int, ...]) -> bool:
-        choices = self.setting.choices
-        columns = tuple(
-            sorted({int(choices.column[k]) for i in members for k in choices.copies(i)})
-        )
+        directions = self.setting.choices.directions
+        columns = tuple(sorted([k for i in members for k in directions[i]]))
         if columns not in self.known:
             sizes, spread, _ = free(self.evidence, columns)
             self.known[columns] = all(
                 c.low - SLACK * sd <= c.value - size <= c.high + SLACK * sd
                 for c, size, sd in zip(
-                    (self.setting.columns[k] for k in columns), sizes, spread, strict=True
+                    (self.setting.columns[k] for k in columns),
+                    sizes.tolist(),
+                    spread.tolist(),
+                    strict=True,
                 )
             )
         return self.known[columns]
 
 
 def _group(
-    evidence: Evidence, setting: Setting, odds: Vector, item: int, others: list[int]
+    gram: Gram, evidence: Evidence, setting: Setting, odds: Vector, item: int, others: list[int]
 ) -> tuple[Member, ...]:
     """Everything that could stand in the item's place, the rest of the explanation kept."""
     choices, label = setting.choices, setting.label
-    weight = replacements(evidence, choices, others) + odds
+    weight = replacements(gram, others) + odds
     weight[np.isin(choices.owner, choices.owner[others])] = -np.inf
     weight[np.isin(label, label[others])] = -np.inf
     share = np.exp(weight - weight.max())

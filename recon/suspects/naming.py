@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -131,19 +131,47 @@ def name_suspects(
         return (unexplained("no instrument, source or leak is visible here"),)
     odds = log_odds_of(known, alarm.level) if log_odds is None else log_odds
     known, odds = narrowed(known, odds)
-    evidence = Evidence(N=known.G.T @ known.z, M=known.G.T @ known.G)
     setting = setting_of(known.candidates, known.columns, known.classes)
-    found = explain(evidence, setting, odds, something=True)
-    left = float(known.z @ known.z) - found.explained
-    freedom = len(known.z) - found.directions
-    p_left = float(chi2.sf(max(left, 0.0), freedom)) if freedom > 0 else 1.0
-    weak = all(b.probability < POSSIBLE for b in found.blamed)
-    if not found.blamed or (weak and p_left < alarm.level / 2):
+    found, p_left = best_explanation(known, setting, odds, alarm.level)
+    if not found.blamed:
         return (unexplained("no admissible set of faults explains the residuals", p_left),)
     result = tuple(_suspect(b, found, setting, known) for b in found.blamed)
     if p_left < LEFT_OVER:
         result += (unexplained("something more is wrong than what is named above", p_left),)
     return result
+
+
+def best_explanation(
+    signatures: Signatures, setting: Setting, log_odds: Vector, level: float
+) -> tuple[Explanation, float]:
+    """
+    Explain an alarm, or find that nothing does: what is blamed, and how well chance does the rest.
+
+    Parameters
+    ----------
+    signatures : Signatures
+    setting : Setting
+        Of the same signatures.
+    log_odds : ndarray
+        Prior log odds of each choice.
+    level : float
+        Of the alarm [-].
+
+    Returns
+    -------
+    Explanation
+        Nobody is blamed where the best explanation is improbable and leaves too much.
+    p_left : float
+        How often chance leaves as much as what is blamed does.
+    """
+    evidence = Evidence(N=signatures.G.T @ signatures.z, M=signatures.G.T @ signatures.G)
+    found = explain(evidence, setting, log_odds, something=True)
+    left = float(signatures.z @ signatures.z) - found.explained
+    freedom = len(signatures.z) - found.directions
+    p_left = float(chi2.sf(max(left, 0.0), freedom)) if freedom > 0 else 1.0
+    if all(b.probability < POSSIBLE for b in found.blamed) and p_left < level / 2:
+        return replace(found, blamed=()), p_left
+    return found, p_left
 
 
 def unexplained(why: str, p_left: float | None = None) -> Suspect:

@@ -25,6 +25,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from recon.reconcile.answer import Answer
+    from recon.reconcile.linearise import Local
     from recon.reconcile.solver import Sensitivities
     from recon.reconcile.state import State
 
@@ -115,9 +116,28 @@ def signatures_of(answer: Answer, *, leaks: bool = True) -> Signatures:
     With several periods each reading is a suspect in its own period, and a fault that lasts
     through all of them, in proportion to the reading, is a suspect of its own.
     """
-    tests, state, local = answer.tests, answer.test_state, answer.test_local
+    return signatures_at(
+        answer.tests, answer.test_state, answer.test_local, answer.solution.point.x, leaks=leaks
+    )
+
+
+def signatures_at(
+    tests: Sensitivities, state: State, local: Local, x: Vector, *, leaks: bool = True
+) -> Signatures:
+    """
+    Work out signatures around a point.
+
+    Parameters
+    ----------
+    tests : Sensitivities
+        Of ``local``, without inequality bounds.
+    state : State
+    local : Local
+    x : ndarray
+        The point, shape (n,).
+    leaks : bool
+    """
     basis = residual_basis(tests)
-    x = answer.solution.point.x
     checked = tests.leverage
     known = checked > BLIND
     freed = np.where(known, tests.residuals / np.where(known, checked, 1.0), 0.0)

@@ -25,6 +25,9 @@ FLOW_U = 0.025
 SMALLEST_FLOW = 0.004
 """No stream of a generated network carries less than this share of the largest."""
 
+OUTSIDE = 3
+"""The outside is drawn as a stream's end as often as so many nodes."""
+
 RECYCLE_ENDS = {
     "1": (None, "A"),
     "2": ("A", "B"),
@@ -46,12 +49,16 @@ class Case:
     amounts: dict[Amount, float]
 
 
-def flow_network(random: np.random.Generator, *, streams: int, nodes: int, name: str) -> Case:
+def flow_network(
+    random: np.random.Generator, *, streams: int, nodes: int, name: str, most_alike: float = 1.0
+) -> Case:
     """
     Draw a meshed network of flows, every one metered, no node with fewer than three streams.
 
-    Ends are drawn at random; a draw is kept if everything is fed and drained and no stream is
-    smaller than ``SMALLEST_FLOW`` of the largest. Splits at a node are Dirichlet(1.2).
+    Ends are drawn at random, the outside as often as ``OUTSIDE`` nodes; a draw is kept if
+    everything is fed and drained, no stream is smaller than ``SMALLEST_FLOW`` of the largest, and
+    no two meters that can be told apart have a cosine above ``most_alike``. Splits at a node are
+    Dirichlet(1.2).
     """
     while True:
         ends = _ends(random, streams, nodes)
@@ -59,9 +66,26 @@ def flow_network(random: np.random.Generator, *, streams: int, nodes: int, name:
             continue
         sheet = network(ends)
         flows = _flows(sheet, random)
-        if flows is not None and flows.min() > SMALLEST_FLOW * flows.max():
-            break
-    return _metered(name, sheet, flows)
+        if flows is None or flows.min() < SMALLEST_FLOW * flows.max():
+            continue
+        if most_alike >= 1.0 or _most_alike(sheet, flows) <= most_alike:
+            return _metered(name, sheet, flows)
+
+
+def _most_alike(sheet: Flowsheet, flows: Vector) -> float:
+    """Largest cosine of two meters' signatures, exact pairs left out."""
+    node = {n.name: i for i, n in enumerate(sheet.nodes)}
+    A = np.zeros((len(node), len(flows)))
+    for j, s in enumerate(sheet.streams):
+        if s.target is not None:
+            A[node[s.target], j] += 1.0
+        if s.source is not None:
+            A[node[s.source], j] -= 1.0
+    A = A * flows
+    G = np.linalg.solve(np.linalg.cholesky(A @ A.T), A)
+    G = G / np.linalg.norm(G, axis=0)
+    cosine = np.abs(np.triu(G.T @ G, 1))
+    return float(cosine[cosine < 1 - 1e-7].max())
 
 
 def small_recycle(random: np.random.Generator) -> Case:
@@ -79,7 +103,7 @@ def _ends(
     pairs: set[tuple[int, int]] = set()
     outside = nodes
     while len(pairs) < streams:
-        a, b = (int(v) for v in random.integers(nodes + 1, size=2))
+        a, b = (min(int(v), outside) for v in random.integers(nodes + OUTSIDE, size=2))
         if a != b and (b, a) not in pairs:
             pairs.add((a, b))
     degree = np.zeros(nodes + 1, dtype=int)
@@ -143,7 +167,6 @@ def _metered(name: str, sheet: Flowsheet, flows: Vector) -> Case:
                     parts=(Part(of=((unknown, 1.0),)),),
                     value=value,
                     u=FLOW_U * value,
-                    typical=value,
                 )
                 for unknown, value in amounts.items()
             ),
@@ -221,6 +244,7 @@ TILT = 0.06
 FLOW_RANGE, ASSAY_RANGE, GAS_RANGE = (0.008, 0.03), (0.012, 0.05), (0.04, 0.08)
 """Relative standard uncertainties drawn, log-uniform: solids flows, assays, gas sulfur."""
 FLOWS_METERED, ASSAYS_TAKEN = 0.80, 0.80
+"""Shares of flows and assays measured; what enters the site is always weighed."""
 
 
 def copper_site(random: np.random.Generator) -> Case:
@@ -231,7 +255,8 @@ def copper_site(random: np.random.Generator) -> Case:
     for stream in sheet.streams:
         for quantity in stream.carries:
             gas = stream.name in GASES
-            share = 1.0 if gas else FLOWS_METERED if quantity == MASS else ASSAYS_TAKEN
+            sure = gas or (quantity == MASS and stream.source is None)
+            share = 1.0 if sure else FLOWS_METERED if quantity == MASS else ASSAYS_TAKEN
             if random.random() > share:
                 continue
             unknown = Amount(1, stream.name, quantity)
@@ -247,7 +272,6 @@ def copper_site(random: np.random.Generator) -> Case:
                     parts=(Part(of=((unknown, 1.0),), over=over),),
                     value=value,
                     u=value * float(np.exp(random.uniform(np.log(span[0]), np.log(span[1])))),
-                    typical=value,
                     sampler=None if flow else f"{stream.name} sampler",
                 )
             )

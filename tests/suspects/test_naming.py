@@ -13,7 +13,7 @@ from recon.reconcile.problem import Measurement, MeasurementKind, Part, Problem
 from recon.reconcile.read import reconcile
 from recon.solve.closed_form import ClosedForm
 from recon.suspects.alarm import Alarm, raise_alarm
-from recon.suspects.beam import Evidence, search
+from recon.suspects.beam import Evidence, Gram, search
 from recon.suspects.explain import explain, setting_of
 from recon.suspects.naming import Suspect, name_suspects
 from recon.suspects.prior import log_odds_of
@@ -202,7 +202,7 @@ def test_the_beam_finds_what_trying_every_set_finds() -> None:
     choices, label = setting.choices, setting.label
     N, M = signatures.G.T @ signatures.z, signatures.G.T @ signatures.G
     odds = np.full(len(choices.owner), -4.0)
-    found = search(Evidence(N=N, M=M), choices, odds, label, width=60, visited=400, depth=2)
+    found = search(Gram(Evidence(N=N, M=M), choices, label), odds, width=60, visited=400, depth=2)
     H = signatures.G[:, choices.column] * choices.scale
     count = len(choices.owner)
     best: tuple[float, tuple[int, ...]] = (0.0, ())
