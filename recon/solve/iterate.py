@@ -33,6 +33,8 @@ FIRST_DAMPING, LEAST_DAMPING = 1.0, 1e-12
 SETTLING = 1e-3
 """Once readings move by less than this many of their u the pull only fades, and sizes are of where
 the search is."""
+SETTLED = 1e-6
+"""Steps smaller than this are taken whole: rounding in the misfit would hide what they gain."""
 PARTS = (1.0, 0.3, 0.05)
 """Parts of what is open that a pass tries to close."""
 KEEP = 0.05
@@ -130,10 +132,12 @@ def _advance(
     before = _merit(around, price)
     promised = _promised(around, step, price)
     length = _longest(state, point.x, size, move_x)
+    moved = float(np.max(np.abs(around.data @ step.move), initial=0.0))
+    settled = max(moved, float(np.max(np.abs(around.gap), initial=0.0))) < SETTLED
     for _ in range(40):
         trial = Point(x=point.x + length * move_x, beta=point.beta + length * step.move[n:])
         after = _merit(local(state, trial, size), price)
-        if after <= before - 1e-4 * length * promised + 1e-13 * abs(before):
+        if settled or after <= before - 1e-4 * length * promised + 1e-13 * abs(before):
             return trial, length
         length *= 0.5
     raise NotAcceptedError([f"{engine} found no step that lowers the misfit."])
