@@ -91,6 +91,7 @@ def work(url: str, count: int) -> None:
 
     book = SqlBook(url)
     runner = runner_of(book, owner=str(os.getpid()), lease_seconds=LEASE, compute=paused)
+    print("at work", flush=True)
     while True:
         done = {(s.month, s.through) for s in book.standing(SITE)}
         left = [p for p in periods(count) if p not in done]
@@ -102,30 +103,38 @@ def work(url: str, count: int) -> None:
 
 def loop(url: str, *, kills: int, seed: int = 1) -> Tally:
     """Run the loop on an empty migrated book and count."""
-    count = 8 * kills
+    count = 40 + 12 * kills
     book = SqlBook(url)
     keep_site(book, rows_of(date(2026, 1, 3)))
     chance = random.Random(seed)
     command = [sys.executable, "-m", "tests.bench.kills", "--worker", url, "--periods", str(count)]
-    workers = [subprocess.Popen(command) for _ in range(2)]
+    workers = [_started(command) for _ in range(2)]
     killed, give_up = 0, time.monotonic() + 30.0 * kills
     try:
         while any(worker.poll() is None for worker in workers):
             if time.monotonic() > give_up:
                 raise TimeoutError(f"not finished after {killed} kills")
-            time.sleep(chance.uniform(2.0, 3.5) if killed < kills else 0.2)
+            time.sleep(chance.uniform(0.3, 1.5) if killed < kills else 0.2)
             place = chance.randrange(2)
             if killed < kills and workers[place].poll() is None:
                 os.kill(workers[place].pid, signal.SIGKILL)
                 workers[place].wait()
                 killed += 1
-                workers[place] = subprocess.Popen(command)
+                workers[place] = _started(command)
     finally:
         for worker in workers:
             if worker.poll() is None:
                 worker.kill()
             worker.wait()
     return tally(url, book, kills=killed, count=count)
+
+
+def _started(command: list[str]) -> subprocess.Popen[str]:
+    """Start a worker and wait until it works, so that kills fall on work and not on its start."""
+    worker = subprocess.Popen(command, stdout=subprocess.PIPE, text=True)
+    assert worker.stdout is not None
+    worker.stdout.readline()
+    return worker
 
 
 def tally(url: str, book: SqlBook, *, kills: int, count: int) -> Tally:
