@@ -29,8 +29,9 @@ HARDER = (1.0, 10.0, 100.0, 1000.0)
 HEAVY = 3e3
 """A standardised data row steeper than this, per typical size, is treated as a soft equality."""
 REFINE = 40
-ROUNDS, SAME = 8, 1e-9
-"""Many columns are refined so often at most, or until a round changes them by no more."""
+ROUNDS, LOOSE_ROUNDS, SAME = 8, 3, 1e-7
+"""Many columns are refined so often at most, or until a round changes them by no more; each round
+leaves a fraction of what the one before changed."""
 STRICT = 1e3
 """How much more an open equality weighs than a slope, while refining."""
 RESTS = 0.5
@@ -190,7 +191,9 @@ class Kkt:
             d, v = d + change[:wide], v + change[wide:]
         return best[0], -best[1][: len(gap)]
 
-    def columns(self, top: Vector, gap: Vector | None = None) -> Vector:
+    def columns(
+        self, top: Vector, gap: Vector | None = None, *, loose: NDArray[np.bool_] | None = None
+    ) -> Vector:
         """
         Solve for many right sides at once, refined.
 
@@ -200,6 +203,10 @@ class Kkt:
             Slopes, shape (N, k).
         gap : ndarray, optional
             Right sides of the equalities, shape (p, k).
+        loose : ndarray, optional
+            Columns with a share that neither data nor equalities see, shape (k,). They have no
+            limit; all of them are refined equally often, so that what they do not share cancels in
+            combinations that are determined.
 
         Returns
         -------
@@ -212,10 +219,16 @@ class Kkt:
         if gap is not None:
             right[wide : wide + len(gap)] = gap
         answer = self._solve(right)
-        for _ in range(ROUNDS):
-            change = self._solve(right - self._apply(answer))
-            answer = answer + change
-            if np.abs(change).max(initial=0.0) <= SAME * np.abs(answer).max(initial=0.0):
+        going = np.arange(right.shape[1])
+        for passes in range(1, ROUNDS + 1):
+            change = self._solve(right[:, going] - self._apply(answer[:, going]))
+            answer[:, going] += change
+            most = np.abs(answer[:, going]).max(axis=0, initial=0.0)
+            open_ = np.abs(change).max(axis=0, initial=0.0) > SAME * most
+            if loose is not None:
+                open_ = np.where(loose[going], passes < LOOSE_ROUNDS, open_)
+            going = going[open_]
+            if not len(going):
                 break
         return answer
 

@@ -170,7 +170,7 @@ class SparseSensitivities:
     def rows(self, gradients: Gradients) -> Vector:
         """Sensitivities of k quantities, shape (k, m + g + h)."""
         wide = self.kkt.wide
-        answer = self.kkt.columns(_dense(gradients).T)
+        answer = self.kkt.columns(_dense(gradients).T, loose=~self.determined(gradients))
         to_data = self.local.data @ answer[:wide]
         to_held = answer[wide + self.local.held_rows] * self.local.held_pull[:, None]
         return np.asarray(np.vstack([to_data, to_held]).T)
@@ -181,11 +181,12 @@ class SparseSensitivities:
         forms = sparse.csc_array(gradients)
         used = np.flatnonzero(np.diff(forms.indptr))
         total = np.zeros(gradients.shape[0])
+        loose = ~self.determined(sparse.csr_array(sparse.eye_array(wide)))
         for first in range(0, len(used), BLOCK):
             asked = used[first : first + BLOCK]
             unit = np.zeros((wide, len(asked)))
             unit[asked, np.arange(len(asked))] = 1.0
-            columns = self.kkt.columns(unit)[:wide]
+            columns = self.kkt.columns(unit, loose=loose[asked])[:wide]
             total += (forms[:, asked].tocoo().multiply(forms @ columns)).sum(axis=1)
         return np.maximum(total, 0.0)
 
