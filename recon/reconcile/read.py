@@ -48,13 +48,14 @@ def reconcile(problem: Problem, engine: Engine) -> Answer:
     state = state_of(problem)
     solution = engine.solve(state)
     sensitivities = engine.sensitivities(solution.local)
+    estimates = tuple(_estimates(state, solution, sensitivities))
     test_state, test_local = _test_problem(state, solution)
     tests = sensitivities if test_state is state else engine.sensitivities(test_local)
     residuals = tests.residuals
     objective = float(residuals @ residuals)
     freedom = tests.degrees_of_freedom
     return Answer(
-        estimates=tuple(_estimates(state, solution, sensitivities)),
+        estimates=estimates,
         measurements=tuple(_reconciled(state, test_state, solution, tests)),
         offsets=tuple(_offsets(state, solution, sensitivities, tests)),
         figures=tuple(figure_values(state, solution, sensitivities, problem.figures)),

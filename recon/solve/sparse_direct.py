@@ -39,6 +39,8 @@ WHOLE = 0.01
 """Degrees of freedom farther than this from a whole number are not believed."""
 MOST_SETS = 20
 """Sets of active bounds tried before the search goes inside the bounds."""
+FITTED = "fitted"
+"""Where a set of sensitivities keeps the variances of fitted values."""
 BLOCK = 256
 """Columns solved for at once."""
 
@@ -158,7 +160,9 @@ class SparseSensitivities:
     @cached_property
     def leverage(self) -> Vector:
         """Share of each datum's variance left in its residual, shape (m + g,)."""
-        fitted = self.variances(self.local.data)
+        if FITTED not in self.__dict__:
+            self.variances(sparse.csr_array((0, self.kkt.wide)))
+        fitted = self.__dict__[FITTED]
         return np.where(self._live, np.clip(1.0 - fitted, 0.0, 1.0), 0.0)
 
     @cached_property
@@ -176,11 +180,18 @@ class SparseSensitivities:
         return np.asarray(np.vstack([to_data, to_held]).T)
 
     def variances(self, gradients: Gradients) -> Vector:
-        """Variances of k quantities from all data, held values taken as exact, shape (k,)."""
+        """
+        Variances of k quantities from all data, held values taken as exact, shape (k,).
+
+        The first call solves for nearly every column of the covariance and keeps the fitted values'
+        variances, so that leverages cost nothing more.
+        """
         wide = self.kkt.wide
-        forms = sparse.csc_array(gradients)
+        asks = sparse.csr_array(gradients)
+        first_call = FITTED not in self.__dict__
+        forms = sparse.csc_array(sparse.vstack([self.local.data, asks]) if first_call else asks)
         used = np.flatnonzero(np.diff(forms.indptr))
-        total = np.zeros(gradients.shape[0])
+        total = np.zeros(forms.shape[0])
         loose = ~self.determined(sparse.csr_array(sparse.eye_array(wide)))
         for first in range(0, len(used), BLOCK):
             asked = used[first : first + BLOCK]
@@ -188,7 +199,11 @@ class SparseSensitivities:
             unit[asked, np.arange(len(asked))] = 1.0
             columns = self.kkt.columns(unit, loose=loose[asked])[:wide]
             total += (forms[:, asked].tocoo().multiply(forms @ columns)).sum(axis=1)
-        return np.maximum(total, 0.0)
+        total = np.maximum(total, 0.0)
+        if first_call:
+            self.__dict__[FITTED] = total[: self.local.data.shape[0]]
+            return total[self.local.data.shape[0] :]
+        return total
 
     def shared_rows(self, gradients: Gradients) -> Vector:
         """Sensitivities to draws' priors and held values only, shape (k, g + h)."""
