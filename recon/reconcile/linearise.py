@@ -140,7 +140,8 @@ def local(state: State, point: Point, scale: Vector, *, alike: bool = True) -> L
 def standing_parts(readings: Readings, x: Vector, scale: Vector) -> NDArray[np.bool_]:
     """Which parts have a denominator at zero, shape (k,)."""
     typical = abs(readings.over) @ scale
-    return np.asarray(readings.ratio & (readings.over @ x <= STANDING * typical))
+    low = readings.over @ x <= STANDING * typical
+    return np.asarray(readings.ratio & (readings.tied | low))
 
 
 def _data_rows(
@@ -182,7 +183,7 @@ def _standing_ties(
     groups: dict[tuple[object, object], list[int]] = {}
     for i in np.flatnonzero(standing):
         parts = fit.measurements[i].parts
-        if len(parts) == 1:
+        if len(parts) == 1 and not fit.tied[fit.gather[[i], :].indices[0]]:
             groups.setdefault((parts[0].of, parts[0].over), []).append(int(i))
     ties = []
     for members in groups.values():

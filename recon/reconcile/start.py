@@ -42,7 +42,10 @@ AWAY = 0.02
 
 def first_guess(state: State) -> tuple[Vector, Vector]:
     """
-    Guess every unknown and its size from readings of it, else from its quantity's median.
+    Guess every unknown and its size: from readings of it, of its place on other days, of others.
+
+    A stream or stock that is not read on one day is likely of the size it is read at on others;
+    only a place that is never read gets the median of its quantity.
 
     Returns
     -------
@@ -57,32 +60,53 @@ def first_guess(state: State) -> tuple[Vector, Vector]:
     for column, values in amounts.items():
         x[column] = float(np.mean(values))
     typical = _typical_sizes(state, x, fractions)
-    sizes = np.array([_typical_of(c, typical) for c in state.columns])
+    own, grade = _by_place(state, amounts), _by_place(state, fractions)
+    sizes = np.array([_size_of(c, typical, own, grade) for c in state.columns])
     mass_first = sorted(
         range(len(x)), key=lambda i: getattr(state.columns[i], "quantity", MASS) != MASS
     )
     for i in mass_first:
         if np.isnan(x[i]):
-            x[i] = _fill(state, i, x, fractions, sizes[i])
+            x[i] = _fill(state, i, x, fractions, grade, sizes[i])
     _fill_compositions(state, x)
     return x, np.maximum(np.abs(x), SMALLEST * sizes)
+
+
+Place = tuple[type, str, str]
+"""Stream or stock, its name, and the quantity: the same on every day."""
+
+
+def _place(column: Amount | Stock) -> Place:
+    name = column.stream if isinstance(column, Amount) else column.node
+    return type(column), name, column.quantity
+
+
+def _by_place(state: State, read: dict[int, list[float]]) -> dict[Place, float]:
+    """Median size of what is read at each place over all periods, zeros left out."""
+    found: dict[Place, list[float]] = {}
+    for i, values in read.items():
+        column = state.columns[i]
+        if isinstance(column, Amount | Stock):
+            found.setdefault(_place(column), []).extend(abs(v) for v in values if v)
+    return {place: float(np.median(values)) for place, values in found.items() if values}
 
 
 def _collect(
     readings: Readings, amounts: dict[int, list[float]], fractions: dict[int, list[float]]
 ) -> None:
-    """Sort the readings of one single unknown by its column."""
+    """Sort the readings by column: amounts of one single unknown, fractions of one or several."""
     per_reading = np.diff(readings.gather.indptr)
     per_part = np.diff(readings.of.indptr)
     first = readings.gather.indptr[:-1]
     for i in np.flatnonzero(per_reading == 1):
         k = int(readings.gather.indices[first[i]])
-        if per_part[k] != 1:
-            continue
-        at = readings.of.indptr[k]
-        into = fractions if readings.ratio[k] else amounts
-        column = int(readings.of.indices[at])
-        into.setdefault(column, []).append(float(readings.value[i] / readings.of.data[at]))
+        row = slice(readings.of.indptr[k], readings.of.indptr[k + 1])
+        if readings.ratio[k]:
+            for column in readings.of.indices[row]:
+                fractions.setdefault(int(column), []).append(float(readings.value[i]))
+        elif per_part[k] == 1:
+            column, factor = int(readings.of.indices[row][0]), float(readings.of.data[row][0])
+            amounts.setdefault(column, []).append(float(readings.value[i]) / factor)
 
 
 def _typical_sizes(
@@ -115,16 +139,36 @@ def _typical_sizes(
     return result
 
 
-def _typical_of(column: object, typical: dict[tuple[type, str], float]) -> float:
+def _size_of(
+    column: object,
+    typical: dict[tuple[type, str], float],
+    own: dict[Place, float],
+    grade: dict[Place, float],
+) -> float:
     if isinstance(column, Share):
         return 1.0
     if isinstance(column, Common):
         return typical[Amount, column.quantity]
     assert isinstance(column, Amount | Stock)
-    return typical[type(column), column.quantity]
+    place = _place(column)
+    kind, name, quantity = place
+    if place in own:
+        return own[place]
+    mass = own.get((kind, name, MASS), typical.get((kind, MASS), 0.0))
+    if place in grade and mass > 0:
+        return mass * grade[place]
+    known_mass = (kind, name, MASS) in own
+    return min(typical[kind, quantity], 0.5 * mass) if known_mass else typical[kind, quantity]
 
 
-def _fill(state: State, i: int, x: Vector, fractions: dict[int, list[float]], size: float) -> float:
+def _fill(
+    state: State,
+    i: int,
+    x: Vector,
+    fractions: dict[int, list[float]],
+    grade: dict[Place, float],
+    size: float,
+) -> float:
     column = state.columns[i]
     if isinstance(column, Share | Common):
         return size
@@ -132,6 +176,8 @@ def _fill(state: State, i: int, x: Vector, fractions: dict[int, list[float]], si
         mass = float(x[state.index[column._replace(quantity=MASS)]])
         if i in fractions:
             return mass * float(np.mean(fractions[i]))
+        if _place(column) in grade:
+            return mass * grade[_place(column)]
         return min(size, 0.5 * mass)
     return size
 
@@ -198,6 +244,8 @@ def _away_from_zero(state: State, x: Vector, size: Vector) -> Vector:
     masses = np.unique(state.fit.over.indices)
     lifted = x.copy()
     lifted[masses] = np.maximum(x[masses], AWAY * size[masses])
+    for column, value in state.pinned.items():
+        lifted[column] = value
     return lifted
 
 

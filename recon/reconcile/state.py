@@ -67,6 +67,8 @@ class Readings:
         Numerators and denominators, shape (k, n), k parts [t].
     ratio : ndarray
         Which parts have a denominator, shape (k,).
+    tied : ndarray
+        Which of them relations tie to zero: the stream stands, whatever is tried; shape (k,).
     gather : csr_array
         Shares of parts in readings, shape (m, k).
     relative, absolute : csr_array
@@ -79,6 +81,7 @@ class Readings:
     of: sparse.csr_array
     over: sparse.csr_array
     ratio: NDArray[np.bool_]
+    tied: NDArray[np.bool_]
     gather: sparse.csr_array
     relative: sparse.csr_array
     absolute: sparse.csr_array
@@ -124,6 +127,8 @@ class State:
         Linear equalities, shape (p, n), and their right sides and names.
     bounds : csr_array
         Inequalities ``bounds @ x >= floors``, shape (q, n), and names.
+    pinned : dict
+        Value [t] of each column that a relation of one term ties to a number.
     alike : ndarray
         Rows (A column, share column, common column) of ``A - share * common = 0``, shape (r, 3).
     """
@@ -139,6 +144,7 @@ class State:
     bounds: sparse.csr_array
     floors: Vector
     bound_names: tuple[str, ...]
+    pinned: dict[int, float]
     alike: NDArray[np.intp]
 
     @property
@@ -158,7 +164,8 @@ def state_of(problem: Problem) -> State:
     """Lay a problem out as arrays; the order of its streams and readings does not matter."""
     columns: list[Column] = list(unknowns(problem.flowsheets))
     fixed = _fixed(problem)
-    alike, sums = _common_compositions(problem, columns, {u for u, v in fixed.items() if v == 0.0})
+    zero = {unknown for unknown, value in fixed.items() if value == 0.0}
+    alike, sums = _common_compositions(problem, columns, zero)
     index: dict[Column, int] = {column: i for i, column in enumerate(columns)}
     rows = [*balance_rows(problem.flowsheets), *problem.relations]
     equalities = _rows_matrix([row.form for row in rows], index)
@@ -186,8 +193,8 @@ def state_of(problem: Problem) -> State:
         problem=problem,
         columns=tuple(columns),
         index=index,
-        fit=_readings(problem, [m for m in problem.measurements if not m.held], index),
-        held=_readings(problem, [m for m in problem.measurements if m.held], index),
+        fit=_readings(problem, [m for m in problem.measurements if not m.held], index, zero),
+        held=_readings(problem, [m for m in problem.measurements if m.held], index, zero),
         equalities=equalities,
         right=right,
         equality_names=tuple(names),
@@ -197,6 +204,7 @@ def state_of(problem: Problem) -> State:
             *(row.name for row in bounds),
             *(f"{c.period}: share of {c.stream} >= 0" for c in shares),
         ),
+        pinned={index[u]: value for u, value in fixed.items() if u in index},
         alike=np.array(
             [[index[a], index[s], index[c]] for a, s, c in alike], dtype=np.intp
         ).reshape(-1, 3),
@@ -268,7 +276,10 @@ def _sparse(entries: Sequence[tuple[int, int, float]], shape: tuple[int, int]) -
 
 
 def _readings(
-    problem: Problem, measurements: Iterable[Measurement], index: dict[Column, int]
+    problem: Problem,
+    measurements: Iterable[Measurement],
+    index: dict[Column, int],
+    zero: Collection[Unknown],
 ) -> Readings:
     measured = tuple(measurements)
     parts = [(i, part) for i, m in enumerate(measured) for part in m.parts]
@@ -294,6 +305,10 @@ def _readings(
         of=of,
         over=over,
         ratio=np.array([part.over is not None for _, part in parts], dtype=np.bool_),
+        tied=np.array(
+            [bool(part.over) and all(u in zero for u, _ in part.over or ()) for _, part in parts],
+            dtype=np.bool_,
+        ),
         gather=gather,
         relative=effects[True],
         absolute=effects[False],

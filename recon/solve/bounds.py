@@ -20,9 +20,9 @@ if TYPE_CHECKING:
     Mask = NDArray[np.bool_]
 
 MOST_SETS = 200
-PUSH = -1e-12
+PUSH = -1e-7
 """A bound that would pull, not push, by more than this is let go."""
-SLACK = -1e-10
+SLACK = -1e-9
 """A bound broken by more than this, as a share of typical size, is taken up."""
 
 

@@ -28,13 +28,16 @@ if TYPE_CHECKING:
 MOST_PASSES = 80
 STILL = 1e-10
 """The search ends when no reading's fitted value moves by more than this many of its u."""
+CLOSED = 5e-10
+"""At rest no equality is open by more of its size; acceptance allows twice that."""
 FIRST_DAMPING, LEAST_DAMPING = 1.0, 1e-12
 """Weight of the pull to where the search is, per typical size, at first and at last."""
 SETTLING = 1e-3
 """Once readings move by less than this many of their u the pull only fades, and sizes are of where
 the search is."""
-SETTLED = 1e-6
-"""Steps smaller than this are taken whole: rounding in the misfit would hide what they gain."""
+SETTLED = 1e-3
+"""Steps that move no reading by more of its u are taken whole: rounding in the misfit would hide
+what they gain."""
 PARTS = (1.0, 0.3, 0.05)
 """Parts of what is open that a pass tries to close."""
 KEEP = 0.05
@@ -68,6 +71,8 @@ def iterate(state: State, solve: Callable[[Local], Step], *, engine: str) -> Sol
         step = _step(around, damping, solve)
         whole = _longest(state, point.x, size, size * step.move[: len(point.x)]) == 1.0
         if whole and damping <= LEAST_DAMPING and _at_rest(around, step):
+            point = _moved(point, size, step)
+            around = local(state, point, size)
             return Solution(
                 point=point,
                 local=around,
@@ -119,7 +124,7 @@ def _at_rest(around: Local, step: Step) -> bool:
     moved = float(np.max(np.abs(around.data @ step.move), initial=0.0))
     open_rows = float(np.max(np.abs(around.gap), initial=0.0))
     scale = 1.0 + float(np.max(np.abs(around.misfit), initial=0.0))
-    return moved <= STILL * scale and open_rows <= STILL
+    return moved <= STILL * scale and open_rows <= CLOSED
 
 
 def _advance(
@@ -141,6 +146,11 @@ def _advance(
             return trial, length
         length *= 0.5
     raise NotAcceptedError([f"{engine} found no step that lowers the misfit."])
+
+
+def _moved(point: Point, size: Vector, step: Step) -> Point:
+    n = len(point.x)
+    return Point(x=point.x + size * step.move[:n], beta=point.beta + step.move[n:])
 
 
 def _merit(around: Local, price: float) -> float:

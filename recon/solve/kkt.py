@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 import qdldl
 from scipy import sparse
+from scipy.sparse.linalg import LinearOperator, gmres
 
 from recon.errors import NotAcceptedError
 
@@ -34,6 +35,8 @@ ROUNDS, LOOSE_ROUNDS, SAME = 8, 3, 1e-7
 leaves a fraction of what the one before changed."""
 STRICT = 1e3
 """How much more an open equality weighs than a slope, while refining."""
+SLOW, KRYLOV = 1e-7, 12
+"""Where refinement rests above the first, a Krylov search of so many directions ends it."""
 RESTS = 0.5
 """Refinement ends when a round lowers what is open by less than this factor, twice."""
 
@@ -44,6 +47,10 @@ class Symbolic:
     def __init__(self) -> None:
         self._solver: qdldl.Solver | None = None
         self._pattern: tuple[NDArray[np.int32], NDArray[np.int32]] | None = None
+
+    def forget(self) -> None:
+        """Begin the next factors anew."""
+        self._solver, self._pattern = None, None
 
     def factorise(self, matrix: sparse.csc_matrix) -> qdldl.Solver:
         """
@@ -65,6 +72,11 @@ class Symbolic:
             self._solver = qdldl.Solver(matrix)
             self._pattern = (matrix.indptr, matrix.indices)
         return self._solver
+
+
+def _sound(solver: qdldl.Solver, rows: int) -> bool:
+    """Whether factors give finite answers: pivots may vanish without a word."""
+    return bool(np.isfinite(np.asarray(solver.solve(np.ones(rows)))).all())
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -144,6 +156,9 @@ class Kkt:
                 solver = symbolic.factorise(sparse.csc_matrix(matrix))
             except RuntimeError:
                 continue
+            if not _sound(solver, matrix.shape[0]):
+                symbolic.forget()
+                continue
             return cls(
                 light=light,
                 light_t=light_t,
@@ -189,7 +204,45 @@ class Kkt:
                 break
             change = self.solver.solve(np.concatenate([top, low]))
             d, v = d + change[:wide], v + change[wide:]
+        if not np.isfinite(best_open) or not (best[0].any() or best[1].any() or best_open == 0.0):
+            raise NotAcceptedError(["sparse direct: refinement of the factors gains nothing."])
+        if best_open > SLOW:
+            best = self._hastened(best, np.concatenate([self.light_t @ pull, aim]), best_open)
         return best[0], -best[1][: len(gap)]
+
+    def _hastened(
+        self, found: tuple[Vector, Vector], right: Vector, left: float
+    ) -> tuple[Vector, Vector]:
+        """
+        Take away at once what plain refinement removes too slowly; keep the better answer.
+
+        A bound that holds beside a steep reading of the same ratio makes two rows nearly parallel;
+        refinement then gains a hundredth a round, a Krylov search over the same factors all of it.
+        """
+        wide, n = self.wide, len(right)
+
+        def system(z: Vector) -> Vector:
+            d, v = z[:wide], z[wide:]
+            top = self.light_t @ (self.light @ d) + self.firm_t @ v
+            return np.concatenate([top, self.firm @ d - self.soft * v])
+
+        now = np.concatenate(found)
+        change, _ = gmres(
+            LinearOperator((n, n), matvec=system, dtype=np.float64),
+            right - system(now),
+            M=LinearOperator((n, n), matvec=self.solver.solve, dtype=np.float64),
+            rtol=1e-8,
+            atol=0.0,
+            restart=KRYLOV,
+            maxiter=1,
+        )
+        after = now + change
+        open_rows = np.abs(right - system(after))
+        reached = max(
+            float(open_rows[:wide].max(initial=0.0)),
+            STRICT * float(open_rows[wide:].max(initial=0.0)),
+        )
+        return (after[:wide], after[wide:]) if reached < left else found
 
     def columns(
         self, top: Vector, gap: Vector | None = None, *, loose: NDArray[np.bool_] | None = None
