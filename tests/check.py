@@ -1,7 +1,8 @@
 """The one command before anything lands: format, lint, types, contracts, tests.
 
 `python -m tests.check` runs all of it but the further tier; `--fix` repairs what a tool can;
-`--tests` runs the tests alone; `--further` runs the slow tests alone; `--all` runs everything.
+`--tests` runs the tests alone; `--further` runs the slow tests alone; `--all` runs both.
+Tests marked `long` run by hand: `python -m pytest -m long`.
 """
 
 from __future__ import annotations
@@ -13,7 +14,7 @@ import sys
 from pathlib import Path
 
 ROOT = Path(__file__).resolve().parent.parent
-FAST = "not slow"
+FAST = "not slow and not long"
 
 
 def main() -> int:

@@ -7,7 +7,7 @@ import pytest
 from tests.bench.kills import loop
 
 
-@pytest.mark.slow
+@pytest.mark.long
 @pytest.mark.timeout(1500)
 def test_sixty_kills_leave_every_period_published_once(book_url: str) -> None:
     found = loop(book_url, kills=60)

@@ -178,7 +178,7 @@ def settled(sql_book: SqlBook) -> None:
     sql_book.close()
 
 
-@pytest.mark.slow
+@pytest.mark.long
 @pytest.mark.parametrize("book_url", ["sqlite"], indirect=True)
 @pytest.mark.parametrize("table", COVERED)
 def test_a_change_of_any_column_of_any_table_is_found(

@@ -82,7 +82,7 @@ def test_both_engines_read_the_same_answer(case: str) -> None:
             assert a.value == pytest.approx(b.value, abs=1e-6 * (b.u or 0.0) + 1e-9)
 
 
-@pytest.mark.slow
+@pytest.mark.long
 def test_a_month_of_a_whole_site_is_solved() -> None:
     recipe = Recipe(
         days=31, nodes=15, streams=40, components=4, stocks=4, alike=1, surveyed=0.2, composites=3
