@@ -231,7 +231,8 @@ def _become_owner(database: Database, connection: Connection) -> None:
     if database.sqlite:
         return
     member = connection.exec_driver_sql(
-        "SELECT pg_has_role(current_user, oid, 'MEMBER') FROM pg_roles "
+        "SELECT pg_has_role(current_user, oid, 'MEMBER') "
+        "AND has_schema_privilege(oid, 'public', 'CREATE') FROM pg_roles "
         "WHERE rolname = 'recon_owner'"
     ).scalar()
     if member:
