@@ -107,3 +107,39 @@ def test_a_stream_tied_to_zero_has_no_composition_and_no_bounds_of_its_own() -> 
         assert found[Amount(1, "a", "Cu"), False] == pytest.approx(25.0)
         assert found[Amount(1, "b", "Cu"), False] == pytest.approx(0.0, abs=1e-9)
         assert found[Amount(1, "b", "Cu"), True] is None
+
+
+def test_an_assay_of_a_stream_tied_to_zero_is_set_aside_from_the_start() -> None:
+    """Its sample covers a day on which nothing flowed: no value, and nothing is moved by it."""
+    sheet = network({"in": (None, "tee"), "a": ("tee", None), "b": ("tee", None)}, ("mass", "Cu"))
+
+    def reading(stream: str, quantity: str, value: float, u: float) -> Measurement:
+        of = ((Amount(1, stream, quantity), 1.0),)
+        over = ((Amount(1, stream, "mass"), 1.0),) if quantity != "mass" else None
+        return Measurement(
+            name=f"{stream} {quantity}",
+            period=1,
+            kind=MeasurementKind.METER if over is None else MeasurementKind.ASSAY,
+            parts=(Part(of=of, over=over),),
+            value=value,
+            u=u,
+        )
+
+    problem = Problem(
+        flowsheets=(sheet,),
+        measurements=(
+            reading("in", "mass", 100.0, 1.0),
+            reading("a", "mass", 99.0, 1.0),
+            reading("in", "Cu", 0.30, 0.01),
+            reading("a", "Cu", 0.30, 0.01),
+            reading("b", "Cu", 0.99, 0.001),
+        ),
+        relations=tuple(
+            Row(name=f"b {q} stands", form=((Amount(1, "b", q), 1.0),)) for q in ("mass", "Cu")
+        ),
+    )
+    answer = reconcile(problem, ClosedForm())
+    row = next(m for m in answer.measurements if m.measurement.name == "b Cu")
+    assert (row.reconciled, row.redundant, row.standardised) == (None, False, None)
+    assert answer.objective == pytest.approx(0.5)
+    assert answer.degrees_of_freedom == 2
