@@ -282,8 +282,8 @@ class Rounds:
             )
             ended("failed", str(error))
             return None
-        except BaseException:
-            ended("failed", "interrupted")
+        except BaseException as error:  # a stop as well: the record says why, the error goes on
+            ended("failed", str(error) or type(error).__name__)
             raise
         self._failed.pop((due.month, due.through), None)
         ended(ran.outcome)
